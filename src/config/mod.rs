@@ -1,0 +1,7 @@
+//! # Configuration: the plant engineer's TOML, as types that cannot be wrong
+//!
+//! in: the text of the file. out: a [`site::Site`], or every error at once with its place and what to write instead.
+//! Also here, because everybody names times: how moments and durations are read and printed.
+//! Not here: reading the clock, opening ports, the ledger.
+
+pub mod site;

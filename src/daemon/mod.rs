@@ -1,0 +1,3 @@
+//! # The daemon: tasks, supervision, the only clock, systemd
+
+pub mod clock;

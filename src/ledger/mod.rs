@@ -1,0 +1,7 @@
+//! # The ledger: all SQL, one file, nothing lost
+//!
+//! in: judged readings and events, in order. out: acknowledgements, rows, events, the book of electrodes.
+//! Always: 1. a raw column is written once. 2. a sequence number is never reused. 3. events are appended and chained, never
+//! changed. 4. acknowledged means synced. Not here: what a reading means (`pipeline`), the time of day (`daemon`).
+
+pub mod event;

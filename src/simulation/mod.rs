@@ -1,0 +1,1 @@
+//! # Simulated electrodes and meters behind pseudo-terminals, for the demo and the tests
