@@ -5,3 +5,4 @@
 //! Not here: reading the clock, opening ports, the ledger.
 
 pub mod site;
+pub mod time;
