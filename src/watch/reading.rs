@@ -1,7 +1,7 @@
 //! # A reading: one raw sample with what was made of it
 
 use super::flags::{Flag, Tests};
-use crate::electrode::history::EventId;
+use crate::electrode::history::{EventId, ProbeKind};
 use crate::electrode::units::Timestamp;
 
 /// Where the temperature of a reading came from. The number is stored and never changes.
@@ -57,4 +57,28 @@ pub struct Reading {
     pub tests: Tests,
     /// Where the temperature came from.
     pub temperature_source: TemperatureSource,
+}
+
+/// A potential as it is stored: whole µV.
+pub fn round_mv(mv: f64) -> f64 {
+    (mv * 1_000.0).round() / 1_000.0
+}
+
+/// A temperature as it is stored: whole m°C.
+pub fn round_temp_c(temp_c: f64) -> f64 {
+    (temp_c * 1_000.0).round() / 1_000.0
+}
+
+/// A value as it is stored: whole 1e-4 pH, or whole 1e-2 mV for ORP.
+pub fn round_value(kind: ProbeKind, value: f64) -> f64 {
+    let steps = match kind {
+        ProbeKind::Ph => 10_000.0,
+        ProbeKind::Orp => 100.0,
+    };
+    (value * steps).round() / steps
+}
+
+/// An uncertainty as it is stored: whole 1e-6 of the unit.
+pub fn round_u(u: f64) -> f64 {
+    (u * 1_000_000.0).round() / 1_000_000.0
 }
