@@ -70,6 +70,13 @@ impl<'a> Table<'a> {
 
     /// Notes that a key is not there.
     pub(super) fn lacks(&self, key: &'static str, problems: &mut Problems<'_>) {
+        // Said already, where it was mistyped.
+        let meant = |value: Value<'_>| {
+            !self.knows(value.key) && nearest(value.key, self.unused()) == Some(key)
+        };
+        if self.values().any(meant) {
+            return;
+        }
         let example = self.keys.example(key);
         let instead = if self.path.is_empty() {
             format!("add a table `{example}`")
@@ -108,15 +115,28 @@ impl<'a> Table<'a> {
         join(&self.path, key)
     }
 
+    fn knows(&self, key: &str) -> bool {
+        self.keys.known.iter().any(|(known, _)| *known == key)
+    }
+
+    /// Known keys that do not stand in this table: only these can a mistyped one have meant.
+    fn unused(&self) -> impl Iterator<Item = &'static str> {
+        let known = self.keys.known.iter().map(|(key, _)| *key);
+        known.filter(|key| self.find(key).is_none())
+    }
+
     fn refuse_unknown(&self, problems: &mut Problems<'_>) {
-        let known = || self.keys.known.iter().map(|(key, _)| *key);
         for value in self.values() {
-            if !known().any(|key| key == value.key) {
+            if !self.knows(value.key) {
+                let instead = match nearest(value.key, self.unused()) {
+                    Some(key) => format!("did you mean `{key}`?"),
+                    None => instead_of(value.key, self.keys.known.iter().map(|(key, _)| *key)),
+                };
                 problems.add(
                     &value.key_span,
                     &value.path,
                     &format!("`{}` is no key of {}", value.key, self.keys.table),
-                    &instead_of(value.key, known()),
+                    &instead,
                 );
             }
         }
@@ -132,6 +152,11 @@ impl<'a> Value<'a> {
     /// Notes what is wrong with this value.
     pub(super) fn refuse(&self, problems: &mut Problems<'_>, problem: &str, instead: &str) {
         problems.add(&self.span, &self.path, problem, instead);
+    }
+
+    /// Notes that what this value names is not there.
+    pub(super) fn points_nowhere(&self, problems: &mut Problems<'_>, problem: &str, instead: &str) {
+        problems.missing(&self.span, &self.path, problem, instead);
     }
 
     /// The text, when it is text at all.
@@ -403,7 +428,11 @@ impl<'a> Value<'a> {
 
     /// What to write, by the example.
     pub(super) fn like(&self) -> String {
-        format!("write for example `{} = {}`", self.key, self.example)
+        if self.path == self.key {
+            format!("write `{}`", self.example)
+        } else {
+            format!("write for example `{} = {}`", self.key, self.example)
+        }
     }
 
     fn mistyped(&self, wanted: &str, problems: &mut Problems<'_>) {
@@ -415,7 +444,7 @@ impl<'a> Value<'a> {
         match self.inner {
             DeValue::String(_) => "text",
             DeValue::Integer(_) => "a whole number",
-            DeValue::Float(_) => "a number",
+            DeValue::Float(_) => "a decimal number",
             DeValue::Boolean(_) => "true or false",
             DeValue::Datetime(_) => "a date",
             DeValue::Array(_) => "a list",
