@@ -302,6 +302,27 @@ fn a_temperature_is_read_in_every_form() {
 }
 
 #[test]
+fn limits_of_one_side_may_be_equal() {
+    let text = edited(&[("low_low = 6.5", "low_low = 6.8")]);
+    assert!(load(&text).is_ok());
+}
+
+#[test]
+fn an_effluent_counts_while_anything_flows_unless_told_otherwise() {
+    let flow = |more: &str| {
+        let band = format!("{{ low = 6.0, high = 9.0, flow = \"raceway-1.mv\"{more} }}");
+        let site = load(&edited(&[("{ low = 6.0, high = 9.0 }", &band)])).unwrap();
+        site.points[0].effluent.unwrap().flow
+    };
+    let signal = SignalRef {
+        meter: 0,
+        signal: 0,
+    };
+    assert_eq!(flow(""), Some((signal, 0.0)));
+    assert_eq!(flow(", flow_above = 0.5"), Some((signal, 0.5)));
+}
+
+#[test]
 fn a_question_may_have_its_escapes_between_either_quotes() {
     for ask in [r#""READ?\r\n""#, r"'READ?\r\n'", r"'READ?\x0d\x0A'"] {
         let ask = format!("name    = \"pond-3\"\nask = {ask}\nterminator = '\\r'\n");

@@ -600,3 +600,51 @@ fn broken_toml_hides_nothing_else() {
 23:12 TOML: string values must be quoted, expected literal string -> write `key = value`, text between quotes, one pair a line
 40:38 point.alarm.low: `low` 8.8 is not below `high` 8.6 -> write `low` below 8.6, or `high` above 8.8");
 }
+
+#[test]
+fn limits_that_meet() {
+    check(
+        &[("low = 6.8, high = 8.6", "low = 8.0, high = 8.0")],
+        "
+40:38 point.alarm.low: `low` 8 is not below `high` 8 -> write `low` below 8, or `high` above 8",
+    );
+}
+
+#[test]
+fn a_deadband_exactly_as_wide_as_its_band() {
+    check(
+        &[
+            ("low = 6.8, high = 8.6", "low = 6.5, high = 8.5"),
+            ("deadband = 0.1", "deadband = 2.0"),
+        ],
+        "
+40:83 point.alarm.deadband: a deadband of 2 leaves nothing of the band from 6.5 to 8.5 -> write a deadband well below 2",
+    );
+}
+
+#[test]
+fn one_adapter_for_two_lines_by_its_serial_number() {
+    check(
+        &[
+            (
+                r#""/dev/serial/by-id/usb-rs485-0001""#,
+                r#"{ usb_serial = "A10K7" }"#,
+            ),
+            (r#""/dev/ttyUSB0""#, r#"{ usb_serial = "A10K7" }"#),
+        ],
+        "
+23:27 line.device.usb_serial: usb_serial `A10K7` is already taken on line 8 -> one adapter is one line: put its meters on that line, or name the other adapter",
+    );
+}
+
+#[test]
+fn a_sensor_that_is_named_twice() {
+    check(
+        &[(
+            r#""pond-3.temp_c""#,
+            r#"{ signal = "pond-3.temp_c", ohms = "pond-3.temp_c" }"#,
+        )],
+        r#"
+37:43 point.temperature.ohms: `signal` names the sensor already -> write `"meter.temp_c"`, `{ signal = "meter.temp_c", fallback = 20.0 }`, `{ ohms = "meter.ohms", sensor = "pt1000" }` or `{ fixed = 25.0 }`"#,
+    );
+}
