@@ -15,7 +15,7 @@ pub(super) fn nearest<'k>(bad: &str, known: impl IntoIterator<Item = &'k str>) -
     known
         .into_iter()
         .map(|word| (distance(&bad, &word.to_lowercase()), word))
-        .filter(|(distance, word)| *distance <= 1 + word.len() / 4)
+        .filter(|(distance, word)| *distance <= 1.max((word.len() + 2) / 4))
         .min()
         .map(|(_, word)| word)
 }
@@ -35,5 +35,25 @@ pub(super) fn instead_of<'k>(bad: &str, known: impl IntoIterator<Item = &'k str>
         Some(word) => format!("did you mean `{word}`?"),
         None if known.is_empty() => "there is none yet".to_owned(),
         None => format!("known here: {}", known.join(", ")),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_slip_is_recognised_and_another_word_is_not() {
+        for (bad, known, want) in [
+            ("baut", "baud", Some("baud")),
+            ("vm", "mv", Some("mv")),
+            ("Protocoll", "protocol", Some("protocol")),
+            ("modbus", "modbus-rtu", Some("modbus-rtu")),
+            ("Mars", "Mahe", None),
+            ("colour", "ledger", None),
+            ("", "mv", None),
+        ] {
+            assert_eq!(nearest(bad, [known]), want, "{bad}");
+        }
     }
 }
