@@ -343,7 +343,7 @@ pub struct Effluent {
 
 crate::electrode::named::named! {
     /// Which side of a permit band counts.
-    Sides, "sides" {
+    Sides, "choice of sides" {
         /// Both.
         Both = "both",
         /// Below the lower limit only.

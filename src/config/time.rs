@@ -106,9 +106,6 @@ pub fn parse_time(text: &str, zone: Tz, now: Timestamp) -> Result<Timestamp, Tim
 /// # Errors
 /// [`TimeError::UnreadableStamp`].
 pub fn epoch_or_rfc3339(text: &str) -> Result<Timestamp, TimeError> {
-    if let Some(ms) = plain_rfc3339_ms(text.as_bytes()) {
-        return Ok(Timestamp::from_ms(ms));
-    }
     if let Ok(ms) = text.parse::<i64>() {
         return Ok(Timestamp::from_ms(ms));
     }
@@ -250,81 +247,6 @@ fn shown(t: Timestamp, zone: Tz, shape: &str) -> String {
         // Beyond what the calendar reaches.
         LocalResult::Ambiguous(..) | LocalResult::None => rfc3339_ms(t),
     }
-}
-
-/// Milliseconds of `YYYY-MM-DDTHH:MM:SS[.fraction](Z|±HH:MM)`, or `None` for everything else, however good: an import reads a
-/// million of these a second, and the calendar library is too slow for it.
-fn plain_rfc3339_ms(text: &[u8]) -> Option<i64> {
-    let (clock, rest) = text.split_first_chunk::<19>()?;
-    if [clock[4], clock[7], clock[13], clock[16]] != *b"--::" || clock[10] != b'T' {
-        return None;
-    }
-    let year = two(clock[0], clock[1])? * 100 + two(clock[2], clock[3])?;
-    let month = two(clock[5], clock[6])?;
-    let day = two(clock[8], clock[9])?;
-    let (hour, minute, second) = (
-        two(clock[11], clock[12])?,
-        two(clock[14], clock[15])?,
-        two(clock[17], clock[18])?,
-    );
-    if hour > 23 || minute > 59 || second > 59 || day < 1 || day > days_in_month(year, month)? {
-        return None;
-    }
-    let (fraction_ms, zone) = fraction(rest)?;
-    let offset_minutes = match *zone {
-        [b'Z'] => 0,
-        [sign @ (b'+' | b'-'), h1, h0, b':', m1, m0] => {
-            let (hours, minutes) = (two(h1, h0)?, two(m1, m0)?);
-            if hours > 23 || minutes > 59 {
-                return None;
-            }
-            let offset = hours * 60 + minutes;
-            if sign == b'-' { -offset } else { offset }
-        }
-        _ => return None,
-    };
-    let minutes = (days_since_1970(year, month, day) * 24 + hour) * 60 + minute - offset_minutes;
-    Some((minutes * 60 + second) * 1_000 + fraction_ms)
-}
-
-/// The fraction in whole milliseconds, and what stands behind it.
-fn fraction(text: &[u8]) -> Option<(i64, &[u8])> {
-    let Some((b'.', rest)) = text.split_first() else {
-        return Some((0, text));
-    };
-    let digits = rest.iter().take_while(|b| b.is_ascii_digit()).count();
-    let (figures, zone) = rest.split_at_checked(digits)?;
-    let place = |n: usize| figures.get(n).map_or(0, |b| i64::from(b - b'0'));
-    (1..=9)
-        .contains(&digits)
-        .then_some((place(0) * 100 + place(1) * 10 + place(2), zone))
-}
-
-fn two(tens: u8, ones: u8) -> Option<i64> {
-    (tens.is_ascii_digit() && ones.is_ascii_digit())
-        .then(|| i64::from(tens - b'0') * 10 + i64::from(ones - b'0'))
-}
-
-fn days_in_month(year: i64, month: i64) -> Option<i64> {
-    match month {
-        1 | 3 | 5 | 7 | 8 | 10 | 12 => Some(31),
-        4 | 6 | 9 | 11 => Some(30),
-        2 if (year % 4 == 0 && year % 100 != 0) || year % 400 == 0 => Some(29),
-        2 => Some(28),
-        _ => None,
-    }
-}
-
-/// Days from 1970-01-01 in the Gregorian calendar, years 0 to 9999. The year is counted from March, so that the leap day ends it.
-fn days_since_1970(year: i64, month: i64, day: i64) -> i64 {
-    let (year, month) = if month > 2 {
-        (year, month - 3)
-    } else {
-        (year - 1, month + 9)
-    };
-    let leap_days = year.div_euclid(4) - year.div_euclid(100) + year.div_euclid(400);
-    // (153·m + 2)/5 is the number of days before the m-th month from March: 0, 31, 61, 92, …
-    365 * year + leap_days + (153 * month + 2) / 5 + day - 1 - 719_468
 }
 
 #[cfg(test)]

@@ -22,7 +22,7 @@ pub(super) fn lines(tables: &[Table<'_>], problems: &mut Problems<'_>) -> Vec<Kn
         let name = table.need("name", problems);
         let name = name.and_then(|value| {
             let name = value.name(problems)?;
-            names.take(name, &value, "give this line a name of its own", problems);
+            let name = names.take(name, &value, "give this line a name of its own", problems)?;
             Some(name.to_owned())
         });
         let device = table.need("device", problems);
@@ -53,14 +53,14 @@ fn device_of(value: &Value<'_>, devices: &mut Once, problems: &mut Problems<'_>)
     let instead = "one adapter is one line: put its meters on that line, or name the other adapter";
     if !value.is_table() {
         let path = value.name(problems)?;
-        devices.take(path, value, instead, problems);
+        let path = devices.take(path, value, instead, problems)?;
         return Some(Device::Path(PathBuf::from(path)));
     }
     let table = value.table(&keys::DEVICE, problems)?;
     let serial = table.need("usb_serial", problems)?;
     let number = serial.name(problems)?;
     // A path cannot begin so, hence no number is taken for a path.
-    devices.take(&format!("usb_serial {number}"), &serial, instead, problems);
+    devices.take(&format!("usb_serial {number}"), &serial, instead, problems)?;
     Some(Device::UsbSerial(number.to_owned()))
 }
 

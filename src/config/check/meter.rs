@@ -2,7 +2,7 @@
 
 use super::line::KnownLine;
 use super::signal::{modbus_signals, text_signals};
-use super::{Once, or};
+use super::{Once, all_known, or};
 use crate::config::keys;
 use crate::config::near::instead_of;
 use crate::config::problem::Problems;
@@ -29,7 +29,7 @@ pub(super) fn meters(
     for table in tables {
         let name = table.need("name", problems).and_then(|value| {
             let name = value.name(problems)?;
-            names.take(name, &value, "give this meter a name of its own", problems);
+            let name = names.take(name, &value, "give this meter a name of its own", problems)?;
             Some(name.to_owned())
         });
         let line = table
@@ -88,9 +88,9 @@ pub(super) fn signal_of(
         .enumerate()
         .find(|(_, meter)| meter.name.as_deref() == Some(meter_name))
     else {
-        if meters.iter().all(|meter| meter.name.is_some()) {
+        if all_known(meters.iter().map(|meter| &meter.name)) {
             let names = meters.iter().filter_map(|meter| meter.name.as_deref());
-            value.refuse(
+            value.points_nowhere(
                 problems,
                 &format!("no meter is called `{meter_name}`"),
                 &instead_of(meter_name, names),
@@ -102,7 +102,7 @@ pub(super) fn signal_of(
     let signal = signals.iter().position(|signal| signal.name == signal_name);
     if signal.is_none() {
         let names = signals.iter().map(|signal| signal.name.as_str());
-        value.refuse(
+        value.points_nowhere(
             problems,
             &format!("meter `{meter_name}` has no signal `{signal_name}`"),
             &instead_of(signal_name, names),
@@ -119,10 +119,9 @@ fn line_of(value: &Value<'_>, lines: &[KnownLine], problems: &mut Problems<'_>) 
     let line = lines
         .iter()
         .position(|line| line.name.as_deref() == Some(name));
-    // A line whose own name is faulty may be the one that is meant.
-    if line.is_none() && lines.iter().all(|line| line.name.is_some()) {
+    if line.is_none() && all_known(lines.iter().map(|line| &line.name)) {
         let names = lines.iter().filter_map(|line| line.name.as_deref());
-        value.refuse(
+        value.points_nowhere(
             problems,
             &format!("no line is called `{name}`"),
             &instead_of(name, names),

@@ -120,15 +120,22 @@ struct Once {
 }
 
 impl Once {
-    /// Notes a name and refuses it when it has been used before.
-    fn take(&mut self, name: &str, value: &Value<'_>, instead: &str, problems: &mut Problems<'_>) {
+    /// Notes a name, and gives it back unless it has been used before.
+    fn take<'a>(
+        &mut self,
+        name: &'a str,
+        value: &Value<'_>,
+        instead: &str,
+        problems: &mut Problems<'_>,
+    ) -> Option<&'a str> {
         if let Some(first) = self.seen.get(name) {
             let line = problems.line_of(first);
             let problem = format!("{} is already taken on line {line}", value.shown());
             value.refuse(problems, &problem, instead);
-        } else {
-            self.seen.insert(name.to_owned(), value.span.clone());
+            return None;
         }
+        self.seen.insert(name.to_owned(), value.span.clone());
+        Some(name)
     }
 }
 
@@ -143,6 +150,12 @@ fn or<'a, T>(
         Some(value) => read(value),
         None => Some(otherwise),
     }
+}
+
+/// Whether a name that is not among these is to be refused: not when one of them is faulty and may be the one that was meant,
+/// and not when there is none at all, which has been said.
+fn all_known<'a>(mut names: impl ExactSizeIterator<Item = &'a Option<String>>) -> bool {
+    names.len() > 0 && names.all(Option::is_some)
 }
 
 #[cfg(test)]

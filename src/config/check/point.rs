@@ -3,10 +3,10 @@
 use super::band::{alarm, effluent, refuse_beside_orp, water};
 use super::meter::{KnownMeter, signal_of};
 use super::temperature::temperature;
-use super::{Once, or};
+use super::{Once, all_known, or};
 use crate::config::near::instead_of;
 use crate::config::problem::Problems;
-use crate::config::raw::Table;
+use crate::config::raw::{Table, Value};
 use crate::config::site::Point;
 use crate::electrode::history::{ProbeKind, Tag};
 use std::ops::RangeInclusive;
@@ -59,7 +59,7 @@ pub(super) fn points(
     for table in tables {
         let tag = table.need("tag", problems).and_then(|value| {
             let tag = value.name(problems)?;
-            once.take(tag, &value, "give this point a tag of its own", problems);
+            let tag = once.take(tag, &value, "give this point a tag of its own", problems)?;
             Some(tag.to_owned())
         });
         let quantity = table
@@ -166,7 +166,7 @@ fn point(
 
 fn other_point(
     tag: &str,
-    at: &crate::config::raw::Value<'_>,
+    at: &Value<'_>,
     index: usize,
     known: &[KnownTag],
     problems: &mut Problems<'_>,
@@ -177,12 +177,12 @@ fn other_point(
         .enumerate()
         .find(|(_, point)| point.tag.as_deref() == Some(tag))
     else {
-        if known.iter().all(|point| point.tag.is_some()) {
+        if all_known(known.iter().map(|point| &point.tag)) {
             let others = known.iter().filter_map(|point| point.tag.as_deref());
             let others: Vec<&str> = others
                 .filter(|other| Some(*other) != own.tag.as_deref())
                 .collect();
-            at.refuse(
+            at.points_nowhere(
                 problems,
                 &format!("no point has the tag `{tag}`"),
                 &instead_of(tag, others),

@@ -49,13 +49,14 @@ pub(super) fn temperature(
         (None, None) => None,
     };
     let Some((signal, in_ohms)) = signal else {
+        if table.find("fixed").is_none() {
+            value.refuse(problems, "this says no temperature", SHAPES);
+            return None;
+        }
         for key in ["sensor", "fallback"] {
             if let Some(value) = table.find(key) {
                 refuse_key(&value, &format!("`{key}` goes with a signal"), problems);
             }
-        }
-        if table.find("fixed").is_none() {
-            value.refuse(problems, "this says no temperature", SHAPES);
         }
         return fixed?.map(Temperature::Fixed);
     };
