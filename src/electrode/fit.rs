@@ -10,8 +10,12 @@
 //! Not here: values of buffers by temperature (`buffers`), whether a bottle is past its date, whether a reading had settled (`bench`).
 
 mod diagnose;
+mod error;
+mod orp;
 mod segments;
 
+pub use error::FitError;
+pub use orp::fit_orp;
 pub use segments::{Segment, segment_for, segments};
 
 use super::history::{ElectrodeLine, StandardReading, Verdict};
@@ -98,75 +102,6 @@ impl Fit {
     }
 }
 
-/// Why no line can be drawn.
-#[derive(Debug, Clone, PartialEq, thiserror::Error)]
-pub enum FitError {
-    /// Nothing was read.
-    #[error("there is no reading to fit")]
-    NoReadings,
-    /// A figure that cannot be one.
-    #[error("`{name}`: {what} {figure} cannot be used")]
-    NotAFigure {
-        /// The buffer.
-        name: String,
-        /// Which figure.
-        what: &'static str,
-        /// What it was.
-        figure: f64,
-    },
-    /// The buffers do not span enough.
-    #[error("buffers `{first}` and `{second}` are {apart:.2} pH apart, less than {limit} pH")]
-    BuffersTooClose {
-        /// The lowest.
-        first: String,
-        /// The highest.
-        second: String,
-        /// Their distance, pH.
-        apart: f64,
-        /// The least distance, pH.
-        limit: f64,
-    },
-    /// A reading beyond what glass or metal can give.
-    #[error("`{name}`: {mv} mV is beyond ±{limit} mV, the input is open or saturated")]
-    Saturated {
-        /// The buffer.
-        name: String,
-        /// The reading, mV.
-        mv: f64,
-        /// The limit, mV.
-        limit: f64,
-    },
-    /// The same potential in different buffers.
-    #[error("{mv} mV in every buffer from `{first}` to `{second}`, which are {apart:.2} pH apart")]
-    NoResponse {
-        /// One buffer.
-        first: String,
-        /// Another.
-        second: String,
-        /// Their distance, pH.
-        apart: f64,
-        /// The potential, mV.
-        mv: f64,
-    },
-}
-
-impl FitError {
-    /// What to do about it.
-    pub fn remedy(&self) -> String {
-        match self {
-            Self::NoReadings => "take a reading in a buffer; two buffers give offset and slope".to_owned(),
-            Self::NotAFigure { name, what, .. } => format!("enter the {what} of `{name}` again"),
-            Self::BuffersTooClose { limit, .. } => format!(
-                "take buffers at least {limit} pH apart that bracket the liquid, or one of them alone to set the offset"
-            ),
-            Self::Saturated { .. } => "check plug, cable and wetting of the probe, then read the buffer again".to_owned(),
-            Self::NoResponse { .. } => {
-                "make sure that the bottles differ; then look for broken glass, a wet plug or a shorted cable, and replace the probe".to_owned()
-            }
-        }
-    }
-}
-
 /// Fits a pH electrode's line to readings in buffers.
 ///
 /// - **One reading** gives the offset alone; slope and its variance are carried over from `before`, or are [`PRIOR_SLOPE`] with a warning.
@@ -224,65 +159,6 @@ pub fn fit(
         reasons: Vec::new(),
     };
     diagnose::judge(&mut fit, readings, ph_iso, before, limits);
-    Ok(fit)
-}
-
-/// Fits the offset of an ORP probe to readings in check solutions: measured minus the solution's value against the probe's own reference.
-///
-/// The slope is 1 without variance. With several solutions the offset is their weighted mean; its variance is not taken below the best
-/// single one's, since the solutions share the uncertainty of the reference electrode's table, and it grows with max(1, χ²/(n−1)).
-///
-/// # Errors
-/// [`FitError`] when there is no reading or a figure cannot be one.
-pub fn fit_orp(readings: &[StandardReading], limits: &Limits) -> Result<Fit, FitError> {
-    check(readings, limits)?;
-    let mut points: Vec<(f64, f64)> = readings
-        .iter()
-        .map(|r| {
-            let var =
-                r.u_mv * r.u_mv + r.u_value * r.u_value + (r.value_per_c * r.u_temp_c).powi(2);
-            (r.mv - r.value, var.max(LEAST_VARIANCE_MV2))
-        })
-        .collect();
-    points.sort_by(|a, b| a.0.total_cmp(&b.0).then(a.1.total_cmp(&b.1)));
-    let weight: f64 = points.iter().map(|(_, var)| 1.0 / var).sum();
-    let offset_mv = points.iter().map(|(y, var)| y / var).sum::<f64>() / weight;
-    let chi2: f64 = points
-        .iter()
-        .map(|(y, var)| (y - offset_mv).powi(2) / var)
-        .sum();
-    let best = points
-        .iter()
-        .map(|(_, var)| *var)
-        .fold(f64::INFINITY, f64::min);
-    let freedom = count(readings.len().saturating_sub(1)).max(1.0);
-    let mut fit = Fit {
-        line: ElectrodeLine {
-            offset_mv,
-            slope: 1.0,
-            var_offset_mv2: best * (chi2 / freedom).max(1.0),
-            var_slope: 0.0,
-            cov_mv: 0.0,
-        },
-        residuals_mv: readings
-            .iter()
-            .map(|r| r.mv - r.value - offset_mv)
-            .collect(),
-        chi2,
-        span: [
-            readings
-                .iter()
-                .map(|r| r.value)
-                .fold(f64::INFINITY, f64::min),
-            readings
-                .iter()
-                .map(|r| r.value)
-                .fold(f64::NEG_INFINITY, f64::max),
-        ],
-        verdict: Verdict::Accepted,
-        reasons: Vec::new(),
-    };
-    diagnose::judge_orp(&mut fit, readings, limits);
     Ok(fit)
 }
 
@@ -469,3 +345,6 @@ fn one_point(
 const fn count(n: usize) -> f64 {
     n as f64
 }
+
+#[cfg(test)]
+mod tests;

@@ -7,10 +7,12 @@
 pub mod buffers;
 pub mod convert;
 pub mod fit;
+pub mod glass;
 pub mod history;
 pub(crate) mod named;
 pub mod orp;
 pub mod slope;
+pub mod solution;
 pub mod standard;
 pub mod temperature;
 pub mod units;
