@@ -4,4 +4,13 @@
 //! Also here, because everybody names times: how moments and durations are read and printed.
 //! Not here: reading the clock, opening ports, the ledger.
 
+mod check;
+mod keys;
+mod near;
+pub mod problem;
+mod raw;
 pub mod site;
+pub mod time;
+
+pub use check::load;
+pub use problem::{ConfigError, render, render_styled};

@@ -24,6 +24,18 @@ pub struct Site {
     pub points: Vec<Point>,
 }
 
+impl Site {
+    /// Index into `points` of the point with this tag.
+    pub fn point_index(&self, tag: &Tag) -> Option<usize> {
+        self.points.iter().position(|point| point.tag == *tag)
+    }
+
+    /// The point with this tag.
+    pub fn point(&self, tag: &Tag) -> Option<&Point> {
+        self.points.iter().find(|point| point.tag == *tag)
+    }
+}
+
 /// A serial line.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Line {
