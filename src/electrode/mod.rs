@@ -5,9 +5,14 @@
 //! Not here: judging a stream (`watch`), how facts are kept (`ledger`), what a reading makes of them (`pipeline`).
 
 pub mod buffers;
+pub mod convert;
+pub mod fit;
 pub mod history;
 pub(crate) mod named;
 pub mod orp;
+pub mod slope;
+pub mod standard;
+pub mod temperature;
 pub mod units;
 
 pub use named::UnknownName;
