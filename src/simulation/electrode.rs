@@ -6,7 +6,8 @@
 use super::liquid::Liquid;
 use super::random::{normal_at, walk_at};
 use crate::electrode::history::ProbeKind;
-use crate::electrode::units::Timestamp;
+use crate::electrode::slope::nernst_slope;
+use crate::electrode::units::{Celsius, Kelvin, Timestamp};
 
 /// What a meter shows as temperature when the sensor's circuit is open, °C.
 pub const OPEN_SENSOR_TEMP_C: f64 = 999.9;
@@ -143,9 +144,9 @@ impl SimulatedElectrode {
     }
 }
 
-/// Theoretical slope at `temp_c`, mV/pH.
+/// Theoretical slope at `temp_c`, mV/pH: proportional to the absolute temperature.
 fn theoretical_slope(temp_c: f64) -> f64 {
-    0.198_42 * (temp_c + 273.15)
+    nernst_slope(Celsius::STANDARD).mv_per_ph() * (temp_c + 273.15) / Kelvin::STANDARD.k()
 }
 
 /// Rounded as a meter with one decimal shows it.

@@ -466,6 +466,30 @@ mod tests {
     }
 
     #[test]
+    fn a_meter_says_nothing_while_nobody_has_its_line_open() {
+        let folder = tempfile::tempdir().unwrap();
+        let mut n_lines = 0.0;
+        let figures = move |_: usize, _: Timestamp| {
+            n_lines += 1.0;
+            Shown {
+                mv: n_lines,
+                temp_c: 18.2,
+            }
+        };
+        // By this clock the next second always begins in a millisecond, so a meter that talked to nobody would be far on by now.
+        let clock = || Timestamp::from_ms(999);
+        let link = folder.path().join("pond");
+        let line = SimulatedLine::start(&link, Talk::Stream, Box::new(figures), clock).unwrap();
+        let a_while = Timespec {
+            tv_sec: 0,
+            tv_nsec: 200_000_000,
+        };
+        poll(&mut [], Some(&a_while)).unwrap();
+        let port = open(line.device());
+        assert_eq!(read(&port, 8, LIMIT_MS), b"     1.0");
+    }
+
+    #[test]
     fn a_line_is_gone_when_it_is_dropped() {
         let folder = tempfile::tempdir().unwrap();
         let line = line(&folder.path().join("pond"), Talk::Stream);

@@ -7,6 +7,8 @@
 
 pub mod electrode;
 pub mod liquid;
+pub mod logbook;
 pub mod meter;
 pub mod random;
+pub mod site;
 pub mod talk;
