@@ -343,6 +343,8 @@ mod tests {
     use std::fs::{File, OpenOptions};
     use std::io::Write;
     use std::os::unix::fs::OpenOptionsExt;
+    use std::sync::Arc;
+    use std::sync::atomic::{AtomicUsize, Ordering};
 
     /// Longer than any answer takes.
     const LIMIT_MS: i64 = 5_000;
@@ -468,11 +470,12 @@ mod tests {
     #[test]
     fn a_meter_says_nothing_while_nobody_has_its_line_open() {
         let folder = tempfile::tempdir().unwrap();
-        let mut n_lines = 0.0;
+        let n_asked = Arc::new(AtomicUsize::new(0));
+        let counted = Arc::clone(&n_asked);
         let figures = move |_: usize, _: Timestamp| {
-            n_lines += 1.0;
+            counted.fetch_add(1, Ordering::SeqCst);
             Shown {
-                mv: n_lines,
+                mv: -23.4,
                 temp_c: 18.2,
             }
         };
@@ -485,8 +488,9 @@ mod tests {
             tv_nsec: 200_000_000,
         };
         poll(&mut [], Some(&a_while)).unwrap();
+        assert_eq!(n_asked.load(Ordering::SeqCst), 0);
         let port = open(line.device());
-        assert_eq!(read(&port, 8, LIMIT_MS), b"     1.0");
+        assert_eq!(read(&port, 8, LIMIT_MS), b"   -23.4");
     }
 
     #[test]
