@@ -150,10 +150,7 @@ impl DemoSite {
         self.first_row
     }
 
-    /// What the meter of a point shows at any time: history and live readings alike.
-    ///
-    /// # Panics
-    /// Never for a `point` below 6.
+    /// What the meter of a point (an index into [`TAGS`](Self::TAGS)) shows at any time: history and live readings alike.
     pub fn shown(&self, point: usize, at: Timestamp) -> Shown {
         let electrode = &self.electrodes[point];
         if point == RACEWAY_1A && (self.hold.0..self.hold.1).contains(&at) {
