@@ -12,6 +12,9 @@ use crate::electrode::units::{Celsius, Kelvin, Timestamp};
 /// What a meter shows as temperature when the sensor's circuit is open, °C.
 pub const OPEN_SENSOR_TEMP_C: f64 = 999.9;
 
+/// Time constant with which the drift of a new electrode's offset dies away, days (common practice, no source).
+pub const DRIFT_SETTLES_DAYS: f64 = 20.0;
+
 /// Nodes and weights of the integral `∫ f(x)·e^(−x) dx` from 0 up.
 ///
 /// - **Source** Abramowitz and Stegun (1964), Handbook of Mathematical Functions, table 25.9, n = 4 (from memory).
@@ -47,7 +50,7 @@ pub struct SimulatedElectrode {
     pub commissioned: Timestamp,
     /// Offset when commissioned, mV.
     pub offset_mv: f64,
-    /// Mean drift of the offset, mV per day.
+    /// Drift of the offset when commissioned, mV per day; it dies away over [`DRIFT_SETTLES_DAYS`].
     pub drift_mv_per_day: f64,
     /// Wandering of the offset, mV per square root of a day.
     pub wander_mv: f64,
@@ -77,7 +80,8 @@ impl SimulatedElectrode {
     pub fn offset_mv_at(&self, t: Timestamp) -> f64 {
         let days = t.days_since(self.commissioned);
         let wandered = walk_at(self.seed, days) - walk_at(self.seed, 0.0);
-        self.offset_mv + self.drift_mv_per_day * days + self.wander_mv * wandered
+        let drifted_days = DRIFT_SETTLES_DAYS * (1.0 - (-days / DRIFT_SETTLES_DAYS).exp());
+        self.offset_mv + self.drift_mv_per_day * drifted_days + self.wander_mv * wandered
     }
 
     /// True slope at `t`, fraction of the theoretical one, not below 0; always 1 for an ORP probe.

@@ -305,46 +305,64 @@ fn bottles_for(point: usize) -> &'static [Bottle] {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::electrode::slope::nernst_slope;
+    use crate::electrode::fit::{Fit, Limits, fit, fit_orp};
+    use crate::electrode::history::{StandardReading, Verdict};
 
     const END: Timestamp = Timestamp::from_ms(1_780_000_012_345);
 
-    /// Slope of the straight line through what was read in two or more buffers, fraction of the theoretical one.
-    fn slope(readings: &[InBeaker]) -> f64 {
-        let points: Vec<(f64, f64)> = readings
-            .iter()
-            .map(|reading| {
-                let temp = Celsius::new(reading.temp_c).unwrap();
-                let kind: BufferKind = reading.name.parse().unwrap();
-                let ph = buffer_at(kind, temp).unwrap().value;
-                (nernst_slope(temp).mv_per_ph() * (7.0 - ph), reading.mv)
-            })
-            .collect();
-        let n = f64::from(u8::try_from(points.len()).unwrap());
-        let mean_x = points.iter().map(|p| p.0).sum::<f64>() / n;
-        let mean_y = points.iter().map(|p| p.1).sum::<f64>() / n;
-        let xy: f64 = points.iter().map(|p| (p.0 - mean_x) * (p.1 - mean_y)).sum();
-        let xx: f64 = points.iter().map(|p| (p.0 - mean_x).powi(2)).sum();
-        xy / xx
+    /// Every calibration of a probe, as the electrode room judges it.
+    fn fits(site: &DemoSite, id: &str) -> Vec<(Timestamp, Fit)> {
+        let limits = Limits::default();
+        let mut fits = Vec::new();
+        for entry in site.logbook().unwrap() {
+            match entry.what {
+                Entered::Calibration { probe, readings } if probe.0 == id => {
+                    let readings: Vec<_> = readings.iter().map(standard_reading).collect();
+                    let fit = if id.starts_with('P') {
+                        fit(&readings, 7.0, None, &limits)
+                    } else {
+                        fit_orp(&readings, &limits)
+                    };
+                    fits.push((entry.at, fit.unwrap()));
+                }
+                _ => {}
+            }
+        }
+        fits
     }
 
-    fn slopes(site: &DemoSite, id: &str) -> Vec<(Timestamp, f64)> {
-        let book = site.logbook().unwrap();
-        book.iter()
-            .filter_map(|entry| match &entry.what {
-                Entered::Calibration { probe, readings } if probe.0 == id => {
-                    Some((entry.at, slope(readings)))
-                }
-                _ => None,
+    /// As the command line completes what was written down.
+    fn standard_reading(reading: &InBeaker) -> StandardReading {
+        let temp = Celsius::new(reading.temp_c).unwrap();
+        let standard = reading
+            .name
+            .parse()
+            .map(|kind| buffer_at(kind, temp))
+            .or_else(|_| {
+                let solution = reading.name.parse::<CheckSolution>();
+                solution.map(|solution| check_solution_at(solution, REFERENCE, temp))
             })
-            .collect()
+            .unwrap()
+            .unwrap();
+        StandardReading {
+            name: reading.name.to_owned(),
+            lot: Some(reading.lot.to_owned()),
+            value: standard.value,
+            u_value: standard.u,
+            value_per_c: standard.per_c,
+            mv: reading.mv,
+            u_mv: SETTLED_MV,
+            temp_c: reading.temp_c,
+            u_temp_c: 0.2,
+        }
     }
 
     #[test]
     fn figures_in_the_logbook_give_the_true_slope_back() {
         let site = DemoSite::new(END, 14);
         for (point, (id, _)) in PROBES.iter().enumerate().take(5) {
-            for (at, slope) in slopes(&site, id) {
+            for (at, fit) in fits(&site, id) {
+                let slope = fit.line.slope;
                 let truth = site.electrodes[point].slope_at(at);
                 // 0.15 mV on two readings 133 mV apart are 0.0016 of the slope, five times that at the outside.
                 assert!(
@@ -357,24 +375,44 @@ mod tests {
 
     #[test]
     fn the_tanks_electrode_wears_out_of_its_window_by_the_last_round_and_the_others_do_not() {
-        for days in [1, 2, 7, 14, 40, 120] {
-            let site = DemoSite::new(END, days);
-            for (id, _) in &PROBES[..5] {
-                let slopes = slopes(&site, id);
-                let last = slopes.last().unwrap().1;
-                // Limits of the usual window: below 0.85 rejected, below 0.90 warned (common practice, no source).
-                if *id == PROBES[NEUTRAL_1].0 {
-                    assert!(
-                        slopes[0].1 > 0.90,
-                        "{id} began at {} ({days} d)",
-                        slopes[0].1
+        // Whatever the length of the history and the hour at which it ends.
+        for (days, hour) in [
+            (1, 0),
+            (1, 9),
+            (2, 13),
+            (7, 4),
+            (14, 0),
+            (14, 19),
+            (40, 7),
+            (120, 22),
+        ] {
+            let site = DemoSite::new(END.plus_ms(hour * 60 * MINUTE_MS), days);
+            for (id, _) in PROBES {
+                let fits = fits(&site, id);
+                let (last, earlier) = fits.split_last().unwrap();
+                assert!(!earlier.is_empty(), "{id}, {days} days");
+                for (_, fit) in earlier {
+                    let reasons = &fit.reasons;
+                    assert_ne!(
+                        fit.verdict,
+                        Verdict::Rejected,
+                        "{id}, {days} d: {reasons:?}"
                     );
-                    assert!(
-                        (0.80..0.85).contains(&last),
-                        "{id} ended at {last} ({days} d)"
+                }
+                let last = &last.1;
+                if id == PROBES[NEUTRAL_1].0 {
+                    assert_eq!(
+                        last.verdict,
+                        Verdict::Rejected,
+                        "{id}, {days} days: {last:?}"
                     );
+                    assert!((0.80..0.85).contains(&last.line.slope), "{last:?}");
                 } else {
-                    assert!(last > 0.93, "{id} ended at {last} ({days} d)");
+                    assert_eq!(
+                        last.verdict,
+                        Verdict::Accepted,
+                        "{id}, {days} days: {last:?}"
+                    );
                 }
             }
         }
