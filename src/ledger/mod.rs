@@ -4,4 +4,18 @@
 //! Always: 1. a raw column is written once. 2. a sequence number is never reused. 3. events are appended and chained, never
 //! changed. 4. acknowledged means synced. Not here: what a reading means (`pipeline`), the time of day (`daemon`).
 
+mod audit;
+mod book;
+mod chain;
+mod error;
 pub mod event;
+mod reader;
+mod row;
+mod schema;
+mod store;
+
+pub use audit::{AuditReport, ChainBreak};
+pub use error::LedgerError;
+pub use reader::Reader;
+pub use row::PointId;
+pub use store::{Appended, Batch, Ledger};
