@@ -9,13 +9,17 @@ mod book;
 mod chain;
 mod error;
 pub mod event;
+mod import;
 mod reader;
 mod row;
 mod schema;
 mod store;
+mod writer;
 
 pub use audit::{AuditReport, ChainBreak};
 pub use error::LedgerError;
+pub use import::Imported;
 pub use reader::Reader;
 pub use row::PointId;
 pub use store::{Appended, Batch, Ledger};
+pub use writer::{Clock, LONGEST_WAIT, Trouble, Writer, WriterStatus};
