@@ -38,7 +38,7 @@ pub struct NewEvent {
 
 /// What happened.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-#[serde(tag = "kind", rename_all = "kebab-case")]
+#[serde(tag = "event", rename_all = "kebab-case")]
 pub enum Body {
     /// A probe was added.
     ProbeAdded(ProbeSpec),
@@ -103,21 +103,23 @@ pub enum Body {
         /// The line.
         line: String,
         /// How long it was away, ms.
-        away_ms: i64,
+        away_ms: u64,
     },
     /// A meter stopped giving samples though its line is open.
     MeterSilent {
         /// The meter.
         meter: String,
-        /// The last sample.
-        since: Option<Timestamp>,
+        /// Since when.
+        since: Timestamp,
+        /// What was heard instead.
+        cause: String,
     },
     /// It speaks again.
     MeterBack {
         /// The meter.
         meter: String,
         /// How long it was silent, ms.
-        away_ms: i64,
+        away_ms: u64,
     },
     /// The wall clock jumped.
     ClockStep {
