@@ -38,7 +38,7 @@ pub struct NewEvent {
 
 /// What happened.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-#[serde(tag = "kind", rename_all = "kebab-case")]
+#[serde(tag = "event", rename_all = "kebab-case")]
 pub enum Body {
     /// A probe was added.
     ProbeAdded(ProbeSpec),
