@@ -248,7 +248,8 @@ fn migration_numbers_rise_by_one() {
     names.sort();
     for (number, name) in (1..).zip(&names) {
         assert!(
-            name.starts_with(&format!("{number:04}-")) && name.ends_with(".sql"),
+            name.starts_with(&format!("{number:04}-"))
+                && Path::new(name).extension().is_some_and(|e| e == "sql"),
             "`{name}` stands where `{number:04}-what-it-does.sql` belongs"
         );
     }

@@ -1,5 +1,10 @@
 //! The ledger's promises, tested by breaking the world.
 
+#![expect(
+    clippy::unwrap_used,
+    reason = "helpers of tests, outside the test functions"
+)]
+
 mod broken;
 mod chain;
 mod import;

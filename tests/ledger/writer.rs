@@ -53,7 +53,7 @@ fn what_is_acknowledged_can_be_read() {
 #[test]
 fn stopping_commits_what_waits() {
     let f = fresh();
-    let writer = Writer::start(&f.path, Duration::from_secs(60), CLOCK).unwrap();
+    let writer = Writer::start(&f.path, Duration::from_mins(1), CLOCK).unwrap();
     for n in 0..5 {
         writer
             .push(Batch {
