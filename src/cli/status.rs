@@ -1,0 +1,283 @@
+//! # `status`: every point now
+
+use super::context::{Context, put};
+use super::exit::Exit;
+use super::failure::Failure;
+use super::figures::{self, NOTHING};
+use crate::config::site::{Point, Site};
+use crate::config::time;
+use crate::electrode::convert::Converted;
+use crate::electrode::history::{Book, ProbeHistory, ProbeKind, Tag};
+use crate::electrode::orp;
+use crate::electrode::units::{Celsius, Timestamp};
+use crate::ledger::{LedgerError, PointId, Reader};
+use crate::watch::condition::{Evidence, condition};
+use crate::watch::reading::Reading;
+use crate::watch::status::Status;
+use serde_json::{Value, json};
+
+/// Every point now: value ± u, age, band, flag, probe, its status, calibrate-by
+#[derive(Debug, clap::Args)]
+#[command(after_help = "\
+A value older than three logging intervals (a minute at least) is called stale.
+
+Example:
+  halfcell status
+  halfcell status --at '2026-03-02 09:14' --json")]
+pub(super) struct Args {
+    /// What was known then
+    #[arg(long, value_name = "T", allow_hyphen_values = true)]
+    at: Option<String>,
+}
+
+pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
+    let site = context.site()?;
+    let moment = Moment::asked(context, &site, args.at.as_deref())?;
+    let reader = context.reader(&site)?;
+    let failed = |error: LedgerError| super::context::ledger_failed(&error);
+    if context.json {
+        let book = reader.book(None).map_err(failed)?;
+        let rows = rows(&site, &reader, &book, moment).map_err(failed)?;
+        let points: Vec<Value> = rows.iter().map(object).collect();
+        return context.put_json(&json!({
+            "site": site.name,
+            "time": time::rfc3339_ms(moment.at()),
+            "points": points,
+        }));
+    }
+    put(&table(&site, &reader, moment).map_err(failed)?)
+}
+
+/// The moment a status is of.
+#[derive(Debug, Clone, Copy)]
+pub(super) enum Moment {
+    /// The present: what arrived last counts, even when the clock stepped back.
+    Now(Timestamp),
+    /// Another: what was known then.
+    Then(Timestamp),
+}
+
+impl Moment {
+    /// As asked for with `--at`.
+    pub(super) fn asked(context: &Context, site: &Site, at: Option<&str>) -> Result<Self, Failure> {
+        at.map_or(Ok(Self::Now(context.now)), |text| {
+            context.past(site, text).map(Self::Then)
+        })
+    }
+
+    /// Its time.
+    pub(super) const fn at(self) -> Timestamp {
+        let (Self::Now(at) | Self::Then(at)) = self;
+        at
+    }
+
+    /// The newest reading of a point then, if it has any.
+    pub(super) fn newest(
+        self,
+        reader: &Reader,
+        points: &[(Tag, PointId)],
+        tag: &Tag,
+    ) -> Result<Option<Reading>, LedgerError> {
+        let Some((_, id)) = points.iter().find(|(known, _)| known == tag) else {
+            return Ok(None);
+        };
+        let until = match self {
+            Self::Now(_) => None,
+            Self::Then(at) => Some(at),
+        };
+        Ok(reader.newest(*id, until)?.map(|(_, reading)| reading))
+    }
+}
+
+/// The status table as text.
+pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<String, LedgerError> {
+    let book = reader.book(None)?;
+    let at = moment.at();
+    let rows = rows(site, reader, &book, moment)?;
+    let mut text = format!(
+        "{}, {}\n\n",
+        site.name,
+        time::local_with_zone(at, site.timezone)
+    );
+    text.push_str(&figures::table(
+        &[
+            "POINT",
+            "VALUE",
+            "TEMP",
+            "AGE",
+            "BAND",
+            "FLAG",
+            "PROBE",
+            "STATUS",
+            "CALIBRATE BY",
+        ],
+        rows.iter().map(|row| cells(row, at)).collect(),
+        &[],
+    ));
+    let reasons: Vec<String> = rows.iter().filter_map(reasons).collect();
+    if !reasons.is_empty() {
+        text.push('\n');
+        text.push_str(&reasons.concat());
+    }
+    Ok(text)
+}
+
+/// Why the probe of a point is not good, as a line.
+fn reasons(row: &Row<'_>) -> Option<String> {
+    let (probe, (status, why)) = row.probe.zip(row.condition.as_ref())?;
+    let (tag, id) = (&row.point.tag, &probe.spec.id);
+    (!why.is_empty()).then(|| format!("{tag} {id}: {status}: {}\n", why.join("; ")))
+}
+
+/// What is known of a point at a moment.
+struct Row<'a> {
+    point: &'a Point,
+    reading: Option<Reading>,
+    stale: bool,
+    eh: Option<Converted>,
+    probe: Option<&'a ProbeHistory>,
+    condition: Option<(Status, Vec<String>)>,
+}
+
+fn rows<'a>(
+    site: &'a Site,
+    reader: &Reader,
+    book: &'a Book,
+    moment: Moment,
+) -> Result<Vec<Row<'a>>, LedgerError> {
+    let at = moment.at();
+    let points = reader.points()?;
+    site.points
+        .iter()
+        .map(|point| {
+            let reading = moment.newest(reader, &points, &point.tag)?;
+            let probe = book.probe_at(&point.tag, at);
+            let stale = reading.is_some_and(|reading| stale(point, &reading, at));
+            let condition = probe.map(|probe| {
+                condition(&Evidence {
+                    at,
+                    probe,
+                    reading: reading.as_ref(),
+                    stale,
+                    on_hold: book.hold_at(&point.tag, at).is_some(),
+                    tolerance: point.tolerance,
+                })
+            });
+            Ok(Row {
+                point,
+                stale,
+                eh: probe
+                    .zip(reading)
+                    .and_then(|(probe, reading)| eh(point, probe, &reading)),
+                reading,
+                probe,
+                condition,
+            })
+        })
+        .collect()
+}
+
+/// Whether the newest reading of a point is too old to speak for `at`: three logging intervals, a minute at least.
+pub(super) fn stale(point: &Point, reading: &Reading, at: Timestamp) -> bool {
+    let limit_ms = figures::ms(point.every).saturating_mul(3).max(60_000);
+    at.ms().saturating_sub(reading.at.ms()) > limit_ms
+}
+
+/// Against the standard hydrogen electrode, for an ORP reading that has a value and a temperature.
+fn eh(point: &Point, probe: &ProbeHistory, reading: &Reading) -> Option<Converted> {
+    if point.quantity != ProbeKind::Orp {
+        return None;
+    }
+    let orp = Converted {
+        value: reading.value?,
+        u: reading.u?,
+    };
+    let t = Celsius::new(reading.temp_c?).ok()?;
+    orp::eh(orp, probe.spec.reference, t, point.u_temp_c).ok()
+}
+
+fn cells(row: &Row<'_>, at: Timestamp) -> Vec<String> {
+    let kind = row.point.quantity;
+    let nothing = || NOTHING.to_owned();
+    let (value, temp, age, flag) = match &row.reading {
+        None => ("no reading yet".to_owned(), nothing(), nothing(), nothing()),
+        Some(reading) => {
+            let value = match (reading.value, row.eh) {
+                (None, _) => "no value".to_owned(),
+                (Some(value), None) => figures::value(kind, value, reading.u),
+                (Some(value), Some(eh)) => format!(
+                    "{} (Eh {})",
+                    figures::value(kind, value, reading.u),
+                    figures::with_u(eh.value, eh.u, "mV")
+                ),
+            };
+            let value = if row.stale {
+                format!("stale: {value}")
+            } else {
+                value
+            };
+            let flag = if reading.tests.is_empty() {
+                reading.flag.to_string()
+            } else {
+                format!("{} ({})", reading.flag, reading.tests)
+            };
+            let temp = reading
+                .temp_c
+                .map_or_else(nothing, |c| format!("{c:.1} °C"));
+            (value, temp, figures::age(reading.at, at), flag)
+        }
+    };
+    vec![
+        row.point.tag.to_string(),
+        value,
+        temp,
+        age,
+        band(row.point),
+        flag,
+        row.probe
+            .map_or_else(|| "no probe".to_owned(), |probe| probe.spec.id.to_string()),
+        row.condition
+            .as_ref()
+            .map_or_else(nothing, |(status, _)| status.to_string()),
+        nothing(),
+    ]
+}
+
+/// The alarm limits nearest to where the value should be: `6.8 to 8.6 pH`.
+fn band(point: &Point) -> String {
+    let Some(alarm) = point.alarm else {
+        return NOTHING.to_owned();
+    };
+    let unit = figures::unit(point.quantity);
+    match (alarm.low.or(alarm.low_low), alarm.high.or(alarm.high_high)) {
+        (Some(low), Some(high)) => format!("{low} to {high} {unit}"),
+        (Some(low), None) => format!("above {low} {unit}"),
+        (None, Some(high)) => format!("below {high} {unit}"),
+        (None, None) => NOTHING.to_owned(),
+    }
+}
+
+fn object(row: &Row<'_>) -> Value {
+    let reading = row.reading.as_ref();
+    let mut object = json!({
+        "tag": row.point.tag,
+        "quantity": row.point.quantity,
+        "time": reading.map(|reading| time::rfc3339_ms(reading.at)),
+        "mv": reading.and_then(|reading| reading.mv),
+        "temp_c": reading.and_then(|reading| reading.temp_c),
+        "value": reading.and_then(|reading| reading.value),
+        "u": reading.and_then(|reading| reading.u),
+        "unit": figures::unit(row.point.quantity),
+        "flag": reading.map(|reading| reading.flag),
+        "stale": row.stale,
+        "probe": row.probe.map(|probe| &probe.spec.id),
+        "calibration": reading.and_then(|reading| reading.calibration),
+        "probe_status": row.condition.as_ref().map(|(status, _)| status),
+        "calibrate_by": null,
+        "alarm": null,
+    });
+    if row.point.quantity == ProbeKind::Orp {
+        object["eh"] = json!(row.eh.map(|eh| eh.value));
+    }
+    object
+}
