@@ -56,7 +56,7 @@ impl Backoff {
         let mut hasher = self.dice.build_hasher();
         hasher.write_u64(self.thrown);
         let permille = u32::try_from(hasher.finish() % 334).unwrap_or(0);
-        let wait = self.next - self.next * permille / 1000;
+        let wait = self.next * (1000 - permille) / 1000;
         self.next = (self.next * 2).min(self.longest);
         wait.max(self.first)
     }
@@ -86,7 +86,9 @@ mod tests {
     #[test]
     fn after_success_it_begins_anew() {
         let mut backoff = Backoff::of_a_port();
-        (0..9).for_each(|_| drop(backoff.wait()));
+        for _ in 0..9 {
+            assert!(backoff.wait() >= Duration::from_millis(200));
+        }
         backoff.reset();
         assert_eq!(backoff.wait(), Duration::from_millis(200));
     }

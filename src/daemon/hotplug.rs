@@ -1,5 +1,6 @@
 //! # Noticing that a device came back, without looking again and again
 
+use crate::meters::port::waited_for;
 use rustix::fs::inotify;
 use std::fs::File;
 use std::io;
@@ -25,10 +26,7 @@ impl Hotplug {
             | inotify::WatchFlags::MOVED_TO
             | inotify::WatchFlags::ATTRIB;
         inotify::add_watch(&watch, folder, events)?;
-        Ok(Self(AsyncFd::register_with_interest(
-            File::from(watch),
-            Interest::READABLE,
-        )?))
+        Ok(Self(waited_for(File::from(watch), Interest::READABLE)?))
     }
 
     /// Waits until something appears there.

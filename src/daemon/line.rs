@@ -124,7 +124,6 @@ pub async fn run_line(
     loop {
         match Port::open(of_line) {
             Ok(port) => {
-                task.opened().await;
                 let opened = clock::instant();
                 let End::Lost(error) = task.serve(&port, &mut stop).await else {
                     break;
@@ -190,8 +189,8 @@ struct Task<'a> {
 }
 
 impl Task<'_> {
-    async fn opened(&mut self) {
-        let now = clock::instant();
+    async fn opened(&mut self, port: &Port, bytes: &mut [u8]) -> std::io::Result<()> {
+        let (at, now) = (clock::now(), clock::instant());
         self.machine.on_open(now);
         info!(line = %self.line.name, "line opened");
         if let Some(since) = self.lost.take() {
@@ -203,6 +202,17 @@ impl Task<'_> {
             };
             tell(&self.out, back).await;
         }
+        // What is there already was said before anybody listened, however late it is read.
+        loop {
+            match port.read_now(bytes)? {
+                0 => break,
+                n => {
+                    let actions = self.machine.on_bytes(bytes.get(..n).unwrap_or(&[]), now);
+                    self.act(port, actions, at, now).await?;
+                }
+            }
+        }
+        Ok(())
     }
 
     async fn lost(&mut self, cause: String) {
@@ -223,6 +233,9 @@ impl Task<'_> {
 
     async fn serve(&mut self, port: &Port, stop: &mut watch::Receiver<bool>) -> End {
         let mut bytes = [0_u8; 1024];
+        if let Err(error) = self.opened(port, &mut bytes).await {
+            return End::Lost(error);
+        }
         let mut counters_due = clock::instant() + COUNTERS_EVERY;
         loop {
             let wake = self
