@@ -107,7 +107,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
 }
 
 /// The fit of the readings, as it is recorded.
-fn calibration(
+pub(super) fn calibration(
     probe: &ProbeHistory,
     before: Option<&Dated<Calibration>>,
     readings: Vec<StandardReading>,

@@ -15,7 +15,7 @@ use std::io::{ErrorKind, IsTerminal as _, Write as _};
 use std::path::{Path, PathBuf};
 
 /// The options that stand before or after every command, and the moment it was given.
-#[derive(Debug)]
+#[derive(Debug, Clone)]
 pub(super) struct Context {
     config: PathBuf,
     ledger: Option<PathBuf>,
@@ -76,6 +76,15 @@ impl Context {
     pub(super) fn site(&self) -> Result<Site, Failure> {
         let text = read_config(&self.config)?;
         config::load(&text).map_err(|errors| misconfigured(&self.config, &text, &errors))
+    }
+
+    /// The site, writing where `--ledger` says when it was given.
+    pub(super) fn site_at_ledger(&self) -> Result<Site, Failure> {
+        let mut site = self.site()?;
+        if let Some(path) = &self.ledger {
+            site.ledger.clone_from(path);
+        }
+        Ok(site)
     }
 
     /// The ledger's file.

@@ -8,6 +8,7 @@ mod audit;
 mod calibrate;
 mod config;
 mod context;
+mod demo;
 mod exit;
 mod export;
 mod failure;
@@ -16,9 +17,11 @@ mod grab;
 mod health;
 mod hold;
 mod import;
+mod log;
 mod lot;
 mod probe;
 mod rows;
+mod run;
 mod standards;
 mod status;
 mod typed;
@@ -72,6 +75,8 @@ struct Cli {
 /// One variant per command, in the order a day needs them.
 #[derive(Debug, Subcommand)]
 enum Command {
+    Run(run::Args),
+    Demo(demo::Args),
     Status(status::Args),
     Health(health::Args),
     Calibrate(calibrate::Args),
@@ -94,6 +99,8 @@ pub fn run() -> ExitCode {
     };
     let context = Context::new(cli.config, cli.ledger, cli.json);
     let ended = match &cli.command {
+        Command::Run(args) => run::run(&context, args),
+        Command::Demo(args) => demo::run(&context, args),
         Command::Status(args) => status::run(&context, args),
         Command::Health(args) => health::run(&context, args),
         Command::Calibrate(args) => calibrate::run(&context, args),

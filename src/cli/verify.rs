@@ -27,19 +27,19 @@ Example:
 pub(super) struct Args {
     /// The electrode
     #[arg(long, value_name = "ID")]
-    probe: String,
+    pub(super) probe: String,
     /// When in the visit
     #[arg(long, value_name = "as-found|as-left|check", default_value = "check")]
-    stage: Stage,
+    pub(super) stage: Stage,
     /// Buffer or check solution, settled mV, °C and perhaps the lot; may be repeated
     #[arg(
         long = "buffer",
         value_name = "KIND_OR_PH,MV,TEMP_C[,LOT]",
         required = true
     )]
-    buffers: Vec<TypedBuffer>,
+    pub(super) buffers: Vec<TypedBuffer>,
     #[command(flatten)]
-    who: Who,
+    pub(super) who: Who,
 }
 
 pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
@@ -75,7 +75,7 @@ pub(super) fn sitting<'a>(
     }
 }
 
-fn check(
+pub(super) fn check(
     site: &Site,
     book: &Book,
     args: &Args,
