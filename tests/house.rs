@@ -244,3 +244,20 @@ fn nothing_is_left_for_later_in_the_code() {
         }
     }
 }
+
+#[test]
+fn migration_numbers_rise_by_one() {
+    let mut names: Vec<String> = fs::read_dir(root().join("migrations"))
+        .unwrap()
+        .map(|entry| entry.unwrap().file_name().into_string().unwrap())
+        .collect();
+    names.sort();
+    for (number, name) in (1..).zip(&names) {
+        assert!(
+            name.starts_with(&format!("{number:04}-"))
+                && Path::new(name).extension().is_some_and(|e| e == "sql"),
+            "`{name}` stands where `{number:04}-what-it-does.sql` belongs"
+        );
+    }
+    assert!(!names.is_empty());
+}

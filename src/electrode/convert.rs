@@ -277,3 +277,315 @@ fn check_temperature(t: Celsius) -> Result<(), ConvertError> {
         Err(ConvertError::Temperature(t))
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use proptest::prelude::*;
+
+    const INPUTS: Inputs = Inputs {
+        u_mv: 0.3,
+        u_temp_c: 0.2,
+        u_junction: 0.01,
+    };
+
+    const IDEAL: ElectrodeLine = ElectrodeLine {
+        offset_mv: 0.0,
+        slope: 1.0,
+        var_offset_mv2: 0.04,
+        var_slope: 4e-6,
+        cov_mv: 0.0,
+    };
+
+    fn mv(figure: f64) -> Millivolts {
+        Millivolts::new(figure).unwrap()
+    }
+
+    fn celsius(figure: f64) -> Celsius {
+        Celsius::new(figure).unwrap()
+    }
+
+    #[test]
+    fn minus_177_48_mv_at_25_degrees_is_ph_10() {
+        // By hand: 177.48/59.15935 = 3.00003.
+        let ph = to_ph(mv(-177.48), celsius(25.0), &IDEAL, 7.0, &INPUTS).unwrap();
+        assert!((ph.value - 10.000).abs() < 0.0005, "{ph:?}");
+    }
+
+    #[test]
+    fn the_budget_holds_every_contribution() {
+        let line = ElectrodeLine {
+            offset_mv: 10.0,
+            slope: 0.95,
+            var_offset_mv2: 0.36,
+            var_slope: 2.5e-5,
+            cov_mv: -1e-3,
+        };
+        let budget = ph_budget(mv(-158.6), celsius(25.0), &line, 7.0, &INPUTS).unwrap();
+        // By hand: s·k = 56.201382 mV; d = −168.6/56.201382 = −2.999927; 1/(s·k) = 0.0177932; d/s = −3.157818.
+        for (what, got, want) in [
+            ("value", budget.value, 9.999_927),
+            ("mV", budget.mv, 2.849_4e-5),
+            ("offset", budget.offset, 1.139_76e-4),
+            ("slope", budget.slope, 2.492_95e-4),
+            ("covariance", budget.covariance, 1.123_75e-4),
+            ("temperature", budget.temperature, 4.049_6e-6),
+            ("junction", budget.junction, 1e-4),
+        ] {
+            assert!(
+                (got / want - 1.0).abs() < 5e-5,
+                "{what}: got {got}, want {want}"
+            );
+        }
+        let sum = 2.849_4e-5 + 1.139_76e-4 + 2.492_95e-4 + 1.123_75e-4 + 4.049_6e-6 + 1e-4;
+        assert!((budget.variance() / sum - 1.0).abs() < 5e-5);
+        assert!((budget.converted().u / (2.0 * sum.sqrt()) - 1.0).abs() < 5e-5);
+    }
+
+    #[test]
+    fn the_temperature_lever_is_that_of_the_absolute_temperature() {
+        // Source: practice sheet, section 3 (computed): 1 °C wrong costs 0.34 % of (pH − pH_iso), 0.01 at pH 4 and 10, nothing at 7.
+        for (at, cost) in [(4.0, 0.0101), (7.0, 0.0), (10.0, 0.0101)] {
+            let e = to_mv(Ph::new(at).unwrap(), celsius(25.0), &IDEAL, 7.0).unwrap();
+            let inputs = Inputs {
+                u_mv: 0.0,
+                u_temp_c: 1.0,
+                u_junction: 0.0,
+            };
+            let budget = ph_budget(e, celsius(25.0), &IDEAL, 7.0, &inputs).unwrap();
+            assert!(
+                (budget.temperature.sqrt() - cost).abs() < 5e-5,
+                "pH {at}: {budget:?}"
+            );
+        }
+    }
+
+    #[test]
+    fn an_orp_is_the_reading_less_the_offset() {
+        let line = ElectrodeLine {
+            offset_mv: 4.0,
+            var_offset_mv2: 9.0,
+            ..IDEAL
+        };
+        let inputs = Inputs {
+            u_mv: 2.0,
+            u_temp_c: 5.0,
+            u_junction: 6.0,
+        };
+        let orp = to_orp(mv(654.0), &line, &inputs);
+        // 2·√(2² + 3² + 6²) = 14
+        assert!(
+            (orp.value - 650.0).abs() < 1e-12 && (orp.u - 14.0).abs() < 1e-12,
+            "{orp:?}"
+        );
+        assert_eq!(orp_budget(mv(654.0), &line, &inputs).converted(), orp);
+    }
+
+    #[test]
+    fn no_value_is_made_with_a_temperature_no_probe_can_be_in() {
+        for (c, good) in [(-5.01, false), (-5.0, true), (130.0, true), (130.01, false)] {
+            let single = to_ph(mv(0.0), celsius(c), &IDEAL, 7.0, &INPUTS);
+            assert_eq!(single.is_ok(), good, "{c} °C");
+            let back = to_mv(Ph::new(7.0).unwrap(), celsius(c), &IDEAL, 7.0);
+            assert_eq!(back.is_ok(), good, "{c} °C");
+            let mut out = [Converted {
+                value: -1.0,
+                u: -1.0,
+            }; 2];
+            let slice = to_ph_slice(
+                &[mv(0.0); 2],
+                &[celsius(25.0), celsius(c)],
+                &IDEAL,
+                (7.0, &INPUTS),
+                &mut out,
+            );
+            assert_eq!(slice.is_ok(), good, "{c} °C");
+            assert_eq!(out[0].u > 0.0, good, "an error leaves the rows alone");
+        }
+        let error = to_ph(mv(0.0), celsius(131.0), &IDEAL, 7.0, &INPUTS).unwrap_err();
+        assert_eq!(
+            error.to_string(),
+            "131 °C is no temperature a probe can be in: -5 °C to 130 °C"
+        );
+    }
+
+    #[test]
+    fn a_line_that_is_none_gives_no_value() {
+        type Spoil = fn(&mut ElectrodeLine, &mut Inputs);
+        let spoils: [(Spoil, &str); 9] = [
+            (
+                |l, _| l.slope = 0.0,
+                "an electrode with slope 0 and offset 0 mV cannot be read: the slope must be above 0 and both finite",
+            ),
+            (
+                |l, _| l.slope = f64::INFINITY,
+                "an electrode with slope inf and offset 0 mV cannot be read: the slope must be above 0 and both finite",
+            ),
+            (
+                |l, _| l.offset_mv = f64::NAN,
+                "an electrode with slope 1 and offset NaN mV cannot be read: the slope must be above 0 and both finite",
+            ),
+            (
+                |l, _| l.var_offset_mv2 = -1.0,
+                "variance of the offset of -1 is no uncertainty: it must be finite and not below 0",
+            ),
+            (
+                |l, _| l.var_slope = f64::NAN,
+                "variance of the slope of NaN is no uncertainty: it must be finite and not below 0",
+            ),
+            (
+                |l, _| l.cov_mv = f64::NEG_INFINITY,
+                "covariance of inf is no uncertainty: it must be finite and not below 0",
+            ),
+            (
+                |_, i| i.u_mv = -0.1,
+                "u of the potential of -0.1 is no uncertainty: it must be finite and not below 0",
+            ),
+            (
+                |_, i| i.u_temp_c = f64::NAN,
+                "u of the temperature of NaN is no uncertainty: it must be finite and not below 0",
+            ),
+            (
+                |_, i| i.u_junction = -1.0,
+                "u of the junction of -1 is no uncertainty: it must be finite and not below 0",
+            ),
+        ];
+        for (spoil, text) in spoils {
+            let (mut line, mut inputs) = (IDEAL, INPUTS);
+            spoil(&mut line, &mut inputs);
+            let error = to_ph(mv(0.0), celsius(25.0), &line, 7.0, &inputs).unwrap_err();
+            assert_eq!(error.to_string(), text);
+            let mut out = [Converted { value: 0.0, u: 0.0 }];
+            assert!(
+                to_ph_slice(
+                    &[mv(0.0)],
+                    &[celsius(25.0)],
+                    &line,
+                    (7.0, &inputs),
+                    &mut out
+                )
+                .is_err()
+            );
+        }
+        let flat = ElectrodeLine {
+            slope: -0.1,
+            ..IDEAL
+        };
+        assert!(to_mv(Ph::new(7.0).unwrap(), celsius(25.0), &flat, 7.0).is_err());
+        let huge = ElectrodeLine {
+            slope: 1e3,
+            ..IDEAL
+        };
+        assert!(matches!(
+            to_mv(Ph::new(4.0).unwrap(), celsius(25.0), &huge, 7.0),
+            Err(ConvertError::Potential { .. })
+        ));
+    }
+
+    #[test]
+    fn what_is_not_known_has_no_finite_u() {
+        let unknown = Inputs {
+            u_mv: f64::NAN,
+            ..INPUTS
+        };
+        assert!(to_orp(mv(0.0), &IDEAL, &unknown).u.is_infinite());
+    }
+
+    #[test]
+    fn a_slice_gives_what_single_readings_give() {
+        let line = ElectrodeLine {
+            offset_mv: -7.0,
+            slope: 0.94,
+            var_offset_mv2: 0.5,
+            var_slope: 1e-5,
+            cov_mv: -1.1e-3,
+        };
+        let potentials: Vec<Millivolts> = (-300..300).map(|i| mv(f64::from(i) * 1.3)).collect();
+        let temps: Vec<Celsius> = (0..600)
+            .map(|i| celsius(f64::from(i % 130) - 4.0))
+            .collect();
+        let mut out = vec![Converted { value: 0.0, u: 0.0 }; 600];
+        to_ph_slice(&potentials, &temps, &line, (6.9, &INPUTS), &mut out).unwrap();
+        for ((e, t), got) in potentials.iter().zip(&temps).zip(&out) {
+            let want = to_ph(*e, *t, &line, 6.9, &INPUTS).unwrap();
+            assert!((got.value - want.value).abs() < 1e-12, "{got:?} {want:?}");
+            assert!((got.u - want.u).abs() < 1e-12, "{got:?} {want:?}");
+        }
+    }
+
+    prop_compose! {
+        fn any_line()(offset_mv in -60.0..60.0_f64, slope in 0.5..1.1_f64, sd_offset in 0.0..5.0_f64,
+            sd_slope in 0.0..0.05_f64, correlation in -1.0..1.0_f64) -> ElectrodeLine {
+            ElectrodeLine {
+                offset_mv, slope,
+                var_offset_mv2: sd_offset * sd_offset,
+                var_slope: sd_slope * sd_slope,
+                cov_mv: correlation * sd_offset * sd_slope,
+            }
+        }
+    }
+
+    proptest! {
+        #[test]
+        fn there_and_back_is_the_same_ph(line in any_line(), ph in -1.0..15.0_f64, c in -5.0..130.0_f64, ph_iso in 6.0..8.0_f64) {
+            let e = to_mv(Ph::new(ph).unwrap(), celsius(c), &line, ph_iso).unwrap();
+            let back = to_ph(e, celsius(c), &line, ph_iso, &INPUTS).unwrap();
+            prop_assert!((back.value - ph).abs() < 1e-9, "{ph} came back as {}", back.value);
+        }
+
+        #[test]
+        fn there_and_back_is_the_same_potential(line in any_line(), e in -600.0..600.0_f64, c in -5.0..130.0_f64) {
+            let ph = to_ph(mv(e), celsius(c), &line, 7.0, &INPUTS).unwrap();
+            // A pH beyond its own range is no input of the way back.
+            if let Ok(ph) = Ph::new(ph.value) {
+                let back = to_mv(ph, celsius(c), &line, 7.0).unwrap();
+                prop_assert!((back.mv() - e).abs() < 1e-9, "{e} came back as {back}");
+            }
+        }
+
+        #[test]
+        fn ph_falls_as_the_potential_rises(line in any_line(), e in -600.0..600.0_f64, more in 0.001..100.0_f64, c in -5.0..130.0_f64) {
+            let low = to_ph(mv(e), celsius(c), &line, 7.0, &INPUTS).unwrap();
+            let high = to_ph(mv(e + more), celsius(c), &line, 7.0, &INPUTS).unwrap();
+            prop_assert!(high.value < low.value);
+        }
+
+        #[test]
+        fn u_is_a_number_and_never_below_the_junction(line in any_line(), e in -100_000.0..100_000.0_f64, c in -5.0..130.0_f64,
+            u_mv in 0.0..10.0_f64, u_temp_c in 0.0..10.0_f64, u_junction in 0.0..0.1_f64) {
+            let inputs = Inputs { u_mv, u_temp_c, u_junction };
+            let ph = to_ph(mv(e), celsius(c), &line, 7.0, &inputs).unwrap();
+            prop_assert!(ph.u.is_finite() && ph.u >= 2.0 * u_junction * (1.0 - 1e-9), "{ph:?}");
+        }
+
+        /// Outside the span u grows with the distance: the variance is a parabola of the pH whose least value lies where offset and slope
+        /// are known best.
+        #[test]
+        fn u_grows_outside_the_span(slope in 0.85..1.05_f64, low in 1.0..6.0_f64, high in 7.0..12.0_f64, c in 0.0..100.0_f64,
+            sd in 0.1..2.0_f64, step in 0.1..2.0_f64) {
+            // Two readings of equal weight at x0 and x1: covariance of a straight line.
+            let k = nernst_slope(celsius(c)).mv_per_ph();
+            let (x0, x1) = (k * (7.0 - high), k * (7.0 - low));
+            let mean = f64::midpoint(x0, x1);
+            let sxx = (x1 - x0).powi(2) / 2.0;
+            let line = ElectrodeLine {
+                offset_mv: 0.0,
+                slope,
+                var_offset_mv2: sd * sd * (0.5 + mean * mean / sxx),
+                var_slope: sd * sd / sxx,
+                cov_mv: -sd * sd * mean / sxx,
+            };
+            let inputs = Inputs { u_mv: 0.3, u_temp_c: 0.0, u_junction: 0.01 };
+            let u = |ph: f64| {
+                let e = to_mv(Ph::new(ph).unwrap(), celsius(c), &line, 7.0).unwrap();
+                to_ph(e, celsius(c), &line, 7.0, &inputs).unwrap().u
+            };
+            for far in 0..4 {
+                let d = f64::from(far) * step;
+                prop_assert!(u(high + d + step) > u(high + d));
+                prop_assert!(u(low - d - step) > u(low - d));
+            }
+            prop_assert!(u(high + step) > u(f64::midpoint(low, high)));
+        }
+    }
+}

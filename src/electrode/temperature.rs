@@ -205,3 +205,93 @@ impl Thermistor {
         Ohms::new(ohm).ok()
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_temperature_is_judged_by_where_a_probe_can_be() {
+        let unit = "°C";
+        for (figure, want) in [
+            (
+                -30.01,
+                Err(NoTemperature::Short {
+                    figure: -30.01,
+                    unit,
+                }),
+            ),
+            (
+                -30.0,
+                Err(NoTemperature::Impossible(Celsius::new(-30.0).unwrap())),
+            ),
+            (
+                -5.01,
+                Err(NoTemperature::Impossible(Celsius::new(-5.01).unwrap())),
+            ),
+            (-5.0, Ok(())),
+            (130.0, Ok(())),
+            (
+                130.01,
+                Err(NoTemperature::Impossible(Celsius::new(130.01).unwrap())),
+            ),
+            (
+                150.0,
+                Err(NoTemperature::Impossible(Celsius::new(150.0).unwrap())),
+            ),
+            (
+                150.01,
+                Err(NoTemperature::Open {
+                    figure: 150.01,
+                    unit,
+                }),
+            ),
+            (
+                850.0,
+                Err(NoTemperature::Open {
+                    figure: 850.0,
+                    unit,
+                }),
+            ),
+        ] {
+            let t = Celsius::new(figure).unwrap();
+            assert_eq!(judge(t), want.map(|()| t), "{figure} °C");
+        }
+    }
+
+    #[test]
+    fn each_reason_says_its_figure_and_what_to_do() {
+        let said: Vec<String> = [
+            NoTemperature::Missing,
+            NoTemperature::Open {
+                figure: 212.3,
+                unit: "Ω",
+            },
+            NoTemperature::Short {
+                figure: -242.0,
+                unit: "°C",
+            },
+            NoTemperature::Impossible(Celsius::new(-12.0).unwrap()),
+        ]
+        .iter()
+        .map(|why| format!("{why}; {}", why.remedy()))
+        .collect();
+        assert_eq!(
+            said,
+            [
+                "no temperature was received; connect the temperature sensor, or give the point a fixed temperature",
+                "212.3 Ω says that the temperature sensor is open; check the sensor's plug and cable for a break; replace the sensor",
+                "-242 °C says that the temperature sensor is shorted; check the sensor's plug and cable for water; replace the sensor",
+                "-12 °C is no temperature a probe can be in: -5 °C to 130 °C; check the sensor's kind and scale in the configuration, then the sensor",
+            ]
+        );
+    }
+
+    #[test]
+    fn resistance_stays_within_the_standard_s_range() {
+        let at = |c: f64| PT100.resistance(Celsius::new(c).unwrap()).ohm();
+        assert!((at(-250.0) - at(-200.0)).abs() < 1e-12 && (at(900.0) - at(850.0)).abs() < 1e-12);
+        // Source: IEC 60751:2008 (memory): 18.52 Ω at −200 °C, 390.48 Ω at 850 °C.
+        assert!((at(-200.0) - 18.52).abs() < 0.005 && (at(850.0) - 390.48).abs() < 0.005);
+    }
+}

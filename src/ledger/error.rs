@@ -91,8 +91,8 @@ pub enum LedgerError {
         /// What the system said.
         source: std::io::Error,
     },
-    /// An event does not come back from its text as it went in: it holds a figure that is not finite.
-    #[error("event holds a figure that is not finite and cannot be recorded: {text}")]
+    /// An event does not come back from its text as it went in, as when a figure is not finite.
+    #[error("event does not come back from its text as it went in: {text}")]
     UnstorableEvent {
         /// Its text.
         text: String,

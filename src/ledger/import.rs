@@ -74,13 +74,12 @@ fn sift(
         let same_time = match known.entry((*point, t_ms)) {
             Entry::Occupied(same_time) => same_time.into_mut(),
             Entry::Vacant(free) => {
-                let end = match ends.get(point) {
-                    Some(end) => *end,
-                    None => {
-                        let end = last.query_row([point.id], |row| row.get(0))?;
-                        ends.insert(*point, end);
-                        end
-                    }
+                let end = if let Some(end) = ends.get(point) {
+                    *end
+                } else {
+                    let end = last.query_row([point.id], |row| row.get(0))?;
+                    ends.insert(*point, end);
+                    end
                 };
                 // Rows newer than all that is there, the usual case, need no search.
                 free.insert(match end {
