@@ -4,7 +4,7 @@ use super::context::{Context, Who, put, stated};
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures;
-use super::standards::{self, Asked};
+use super::standards::{self, Asked, Expired};
 use super::typed::TypedBuffer;
 use super::verify::{errors, largest, sitting};
 use crate::config::site::Site;
@@ -73,7 +73,11 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
             book,
             probe: &probe.spec,
             at,
-            expired_may_pass: override_why.is_some(),
+            expired: if override_why.is_some() {
+                Expired::Overridden
+            } else {
+                Expired::WantsOverride
+            },
         };
         let readings = standards::readings(asked, &args.buffers)?;
         calibration(probe, before.as_ref(), readings, override_why).map(Body::Calibration)

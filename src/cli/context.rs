@@ -148,13 +148,13 @@ impl Context {
     /// Tells that an event was recorded, and when it was backdated.
     pub(super) fn recorded(&self, site: &Site, event: &Event, what: &str) -> Result<Exit, Failure> {
         if self.json {
-            // `kind` and `fact` are the body's own.
-            let mut object = json!(event.body);
-            object["event"] = json!(event.id);
-            object["at"] = json!(self.rfc3339(event.at));
-            object["entered"] = json!(self.rfc3339(event.entered));
-            object["by"] = json!(event.by);
-            return self.put_json(&object);
+            return self.put_json(&json!({
+                "event": event.id,
+                "at": self.rfc3339(event.at),
+                "entered": self.rfc3339(event.entered),
+                "by": event.by,
+                "fact": event.body,
+            }));
         }
         put(&format!("{what}\n  {}\n", self.dated(site, event)))
     }

@@ -36,8 +36,19 @@ pub(super) struct Asked<'a> {
     pub(super) probe: &'a ProbeSpec,
     /// When.
     pub(super) at: Timestamp,
-    /// An expired lot may pass, with a stated reason.
-    pub(super) expired_may_pass: bool,
+    /// What becomes of an expired lot.
+    pub(super) expired: Expired,
+}
+
+/// What becomes of an expired lot.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Expired {
+    /// Refused.
+    Refused,
+    /// Refused, but an override with a stated reason would let it pass.
+    WantsOverride,
+    /// Passes: it was overridden.
+    Overridden,
 }
 
 /// What a name stands for.
@@ -128,16 +139,19 @@ fn lot<'a>(asked: Asked<'a>, buffer: &TypedBuffer) -> Result<Option<&'a Lot>, Fa
         ))
         .remedy("name the bottle the probe was in"));
     }
-    if let Some(expires) = lot
-        .expires
-        .filter(|expires| *expires <= asked.at && !asked.expired_may_pass)
-    {
-        return Err(Failure::request(format!(
-            "lot `{number}` ({}) expired {}",
-            lot.kind,
-            time::local(expires, asked.site.timezone)
-        ))
-        .remedy("take a fresh bottle; to use it all the same add `--override --why TEXT`"));
+    let remedy = match asked.expired {
+        Expired::Overridden => return Ok(Some(lot)),
+        Expired::Refused => "take a fresh bottle",
+        Expired::WantsOverride => {
+            "take a fresh bottle; to use it all the same add `--override --why TEXT`"
+        }
+    };
+    if let Some(expires) = lot.expires.filter(|expires| *expires <= asked.at) {
+        let when = time::local(expires, asked.site.timezone);
+        return Err(
+            Failure::request(format!("lot `{number}` ({}) expired {when}", lot.kind))
+                .remedy(remedy),
+        );
     }
     Ok(Some(lot))
 }

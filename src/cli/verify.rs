@@ -5,7 +5,7 @@ use super::exit::Exit;
 use super::failure::Failure;
 use super::figures;
 use super::probe::{in_service, sits_at};
-use super::standards::{self, Asked};
+use super::standards::{self, Asked, Expired};
 use super::typed::TypedBuffer;
 use crate::config::site::Site;
 use crate::electrode::convert::{self, Inputs};
@@ -94,7 +94,7 @@ pub(super) fn check(
         book,
         probe: &probe.spec,
         at,
-        expired_may_pass: false,
+        expired: Expired::Refused,
     };
     let readings = standards::readings(asked, &args.buffers)?;
     let errors = errors(&probe.spec, &calibration.fact.line, &readings)?;

@@ -342,6 +342,19 @@ BUFFER           VALUE        MV     TEMP      ERROR
 }
 
 #[test]
+fn an_expired_lot_verifies_nothing() {
+    let site = Site::with_probe();
+    site.done("lot add --kind phthalate --number OLD --expires 2026-01-31");
+    site.done(
+        "calibrate --probe P-1042 --at '2026-03-01 10:00' --buffer 4,177.5,25 --buffer 7,0,25",
+    );
+    site.refused(
+        "verify --probe P-1042 --at '2026-03-02 10:00' --buffer phthalate,177,25,OLD",
+        "error: lot `OLD` (phthalate) expired 2026-02-01 00:00\n  do:    take a fresh bottle\n",
+    );
+}
+
+#[test]
 fn a_verification_without_a_calibration_in_force_is_refused() {
     let site = Site::with_probe();
     site.refused(

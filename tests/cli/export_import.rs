@@ -2,6 +2,7 @@
 
 use crate::harness::Site;
 use serde_json::{Value, json};
+use std::fmt::Write as _;
 
 const ROWS: &str = "time,point,mv,temp_c\n\
     2026-03-02T13:14:01Z,POND-3,0,25.0\n\
@@ -87,7 +88,7 @@ fn other_figures_at_the_same_time_are_kept_and_counted_as_conflicting() {
 fn broken_rows_are_named_by_line_the_rest_is_kept_and_the_code_is_1() {
     let mut rows = ROWS.to_owned();
     for n in 0..25 {
-        rows.push_str(&format!("2026-03-02T13:15:00Z,POND-9,{n},20\n"));
+        writeln!(rows, "2026-03-02T13:15:00Z,POND-9,{n},20").unwrap();
     }
     rows.push_str("2026-03-02T13:16:00Z,POND-3,3,25\n");
     let (site, said, code) = imported(&rows);
@@ -162,7 +163,7 @@ fn an_export_across_hours_and_points_has_every_row_once() {
             start + n * 60_000,
             if n % 2 == 0 { "POND-3" } else { "BASIN" },
         );
-        rows.push_str(&format!("{at},{point},{n},20\n"));
+        writeln!(rows, "{at},{point},{n},20").unwrap();
     }
     let (site, said, _) = imported(&rows);
     assert_eq!(said["kept"], 500);

@@ -182,8 +182,8 @@ fn a_grab_sample_has_a_point_a_value_and_an_uncertainty() {
     assert_eq!(
         fact,
         serde_json::json!({
-            "event": 1, "at": "2026-03-02T13:14:00.000Z", "entered": null, "by": "M. Oake", "kind": "grab",
-            "fact": {"point": "POND-3", "value": 7.12, "u": 0.03}
+            "event": 1, "at": "2026-03-02T13:14:00.000Z", "entered": null, "by": "M. Oake",
+            "fact": {"event": "grab", "point": "POND-3", "value": 7.12, "u": 0.03}
         })
     );
     let said = site.done("grab --point BASIN --value -120.5");

@@ -1,6 +1,7 @@
 //! Exit codes, configuration, ledgers that cannot be used, and a reader who leaves early.
 
 use crate::harness::{Said, Site};
+use std::fmt::Write as _;
 use std::process::Stdio;
 
 #[test]
@@ -218,10 +219,8 @@ fn a_reader_who_leaves_early_is_no_failure() {
     let site = Site::with_probe();
     let mut rows = "time,point,mv,temp_c\n".to_owned();
     for n in 0..20_000_i64 {
-        rows.push_str(&format!(
-            "{},POND-3,{n}.5,20\n",
-            1_772_450_000_000 + n * 1000
-        ));
+        let at = 1_772_450_000_000 + n * 1000;
+        writeln!(rows, "{at},POND-3,{n}.5,20").unwrap();
     }
     std::fs::write(site.path("rows.csv"), rows).unwrap();
     site.done("import rows.csv");
