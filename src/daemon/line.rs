@@ -138,6 +138,9 @@ pub async fn run_line(
             }
             Err(error) => task.lost(explained(&error)).await,
         }
+        if task.out.is_closed() {
+            break;
+        }
         if let Waited::Stopped = wait(of_line, backoff.wait(), &mut stop).await {
             break;
         }
