@@ -6,7 +6,7 @@ use super::context::{Context, Who, ledger_failed, put};
 use super::exit::Exit;
 use super::failure::Failure;
 use super::run as daemon;
-use super::standards::{self, Asked};
+use super::standards::{self, Asked, Expired};
 use super::status::{self, Moment};
 use super::typed::TypedBuffer;
 use super::{calibrate, verify};
@@ -185,7 +185,7 @@ fn body(site: &Site, book: &Book, entry: Entry) -> Result<Body, Failure> {
                 book,
                 probe: &probe.spec,
                 at: entry.at,
-                expired_may_pass: false,
+                expired: Expired::Refused,
             };
             let readings = standards::readings(asked, &typed(&readings))?;
             Body::Calibration(calibrate::calibration(

@@ -1,0 +1,90 @@
+//! Lines come and go, calibrations are taken up, and no other line notices.
+
+use crate::harness::{PATIENCE, Ponds, events, rows, until};
+use halfcell::ledger::event::Body;
+use halfcell::watch::flags::Flag;
+use std::time::Duration;
+
+#[test]
+fn a_calibration_typed_beside_the_running_daemon_is_in_force_within_two_seconds() {
+    let ponds = Ponds::new().with_probes();
+    let _daemon = ponds.run();
+    let last = || rows(&ponds.ledger(), "POND-A").last().map(|(_, r)| *r);
+    let (before, _) = until("a first value", PATIENCE, || {
+        last().filter(|r| r.value.is_some())
+    });
+    // −23.4 mV at 18.2 °C by offset and slope of the first calibration: between pH 7 and 8.
+    assert!((7.0..8.0).contains(&before.value.unwrap()), "{before:?}");
+    ponds.calibrate(174.0);
+    let (after, took) = until("the new calibration", PATIENCE, || {
+        last().filter(|r| r.calibration != before.calibration)
+    });
+    assert!(after.calibration > before.calibration);
+    assert!(took <= Duration::from_secs(2), "it took {took:?}");
+    assert!(
+        (after.value.unwrap() - before.value.unwrap()).abs() > 0.005,
+        "{before:?} {after:?}"
+    );
+}
+
+#[test]
+fn an_unplugged_line_resumes_by_itself_and_the_gap_is_an_event() {
+    let mut ponds = Ponds::new().with_probes();
+    let _daemon = ponds.run();
+    let n = |ponds: &Ponds, tag: &str| {
+        rows(&ponds.ledger(), tag)
+            .iter()
+            .filter(|(_, r)| r.mv.is_some())
+            .count()
+    };
+    until("readings of both ponds", PATIENCE, || {
+        (n(&ponds, "POND-A") > 1 && n(&ponds, "POND-B") > 1).then_some(())
+    });
+    let lost = |ponds: &Ponds| {
+        events(&ponds.ledger())
+            .into_iter()
+            .find(|e| matches!(&e.body, Body::LineLost { line, .. } if line == "line-a"))
+    };
+    ponds.lines[0].unplug().unwrap();
+    until("the loss to be an event", PATIENCE, || lost(&ponds));
+    let (a, b) = (n(&ponds, "POND-A"), n(&ponds, "POND-B"));
+    until("the other line to go on meanwhile", PATIENCE, || {
+        (n(&ponds, "POND-B") > b + 1).then_some(())
+    });
+    assert!(
+        n(&ponds, "POND-A") <= a + 1,
+        "an unplugged line gives nothing"
+    );
+    ponds.lines[0].plug().unwrap();
+    let ((), took) = until("readings again", PATIENCE, || {
+        (n(&ponds, "POND-A") > a + 1).then_some(())
+    });
+    assert!(took <= Duration::from_secs(5), "it took {took:?}");
+    let back = events(&ponds.ledger())
+        .into_iter()
+        .find(|e| matches!(&e.body, Body::LineBack { line, .. } if line == "line-a"));
+    assert!(back.is_some(), "{:?}", events(&ponds.ledger()));
+    let other = events(&ponds.ledger())
+        .into_iter()
+        .find(|e| matches!(&e.body, Body::LineLost { line, .. } if line == "line-b"));
+    assert_eq!(other, None);
+}
+
+#[test]
+fn a_line_that_is_not_there_is_an_event_and_a_row_says_that_nothing_comes() {
+    let mut ponds = Ponds::new().with_probes();
+    ponds.lines[0].unplug().unwrap();
+    let _daemon = ponds.run();
+    let missing = || {
+        rows(&ponds.ledger(), "POND-A")
+            .into_iter()
+            .find(|(_, r)| r.flag == Flag::Missing)
+    };
+    let ((_, row), _) = until("a row without a reading", PATIENCE, missing);
+    assert_eq!((row.mv, row.tests.to_string().as_str()), (None, "gap"));
+    assert!(
+        events(&ponds.ledger())
+            .iter()
+            .any(|e| matches!(&e.body, Body::LineLost { line, .. } if line == "line-a"))
+    );
+}
