@@ -332,6 +332,27 @@ fn figures_that_cannot_be_are_refused_by_name() {
 }
 
 #[test]
+fn a_figure_at_its_limit_is_still_taken() {
+    let bare = |value: f64, mv: f64| StandardReading {
+        value,
+        mv,
+        u_mv: 0.0,
+        ..right(Phosphate)
+    };
+    // Exactly 1 pH apart, exactly ±2 000 mV, exactly 1 mV apart, a u of 0: lines to be judged, not refusals.
+    for readings in [
+        [bare(6.0, 58.0), bare(7.0, 0.0)],
+        [bare(4.0, 2_000.0), bare(7.0, -2_000.0)],
+        [bare(4.0, 1.0), bare(7.0, 0.0)],
+    ] {
+        assert!(
+            fit(&readings, 7.0, None, &Limits::default()).is_ok(),
+            "{readings:?}"
+        );
+    }
+}
+
+#[test]
 fn one_buffer_moves_the_offset_and_keeps_the_slope() {
     let before = ElectrodeLine {
         offset_mv: -9.0,
