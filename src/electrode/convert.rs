@@ -364,16 +364,16 @@ mod tests {
     fn an_orp_is_the_reading_less_the_offset() {
         let line = ElectrodeLine {
             offset_mv: 4.0,
-            var_offset_mv2: 9.0,
+            var_offset_mv2: 4.0,
             ..IDEAL
         };
         let inputs = Inputs {
-            u_mv: 2.0,
+            u_mv: 3.0,
             u_temp_c: 5.0,
             u_junction: 6.0,
         };
         let orp = to_orp(mv(654.0), &line, &inputs);
-        // 2·√(2² + 3² + 6²) = 14
+        // 2·√(3² + 2² + 6²) = 14
         assert!(
             (orp.value - 650.0).abs() < 1e-12 && (orp.u - 14.0).abs() < 1e-12,
             "{orp:?}"

@@ -113,6 +113,12 @@ mod tests {
             "sodium alone explains it"
         );
         assert_eq!(sodium_shift(11.1, &poor_glass), None);
+        // K·a·10^pH of exactly 1: there is no hydrogen ion left to read.
+        let at_the_edge = Sodium {
+            selectivity: 1.0,
+            activity_mol_l: 1.0,
+        };
+        assert_eq!(sodium_shift(0.0, &at_the_edge), None);
     }
 
     #[test]

@@ -81,7 +81,7 @@ fn there_and_back_is_the_same_temperature() {
             .temperature(PT1000.resistance(celsius(temp_c)))
             .unwrap()
             .c();
-        assert_close(&format!("{temp_c} °C"), back, temp_c, 1e-6);
+        assert_close(&format!("{temp_c} °C"), back, temp_c, 1e-9);
     }
 }
 
@@ -114,6 +114,8 @@ fn an_open_or_shorted_sensor_has_no_temperature() {
         266.0,
         1.0,
     );
+    // The limits themselves are still temperatures.
+    assert!(PT100.temperature(ohms(60.0)).is_ok() && PT100.temperature(ohms(200.0)).is_ok());
     // A Pt1000 on an input set to Pt100 and the reverse never give a temperature.
     assert!(PT100.temperature(ohms(1097.0)).is_err() && PT1000.temperature(ohms(109.7)).is_err());
 }

@@ -332,6 +332,27 @@ fn figures_that_cannot_be_are_refused_by_name() {
 }
 
 #[test]
+fn a_figure_at_its_limit_is_still_taken() {
+    let bare = |value: f64, mv: f64| StandardReading {
+        value,
+        mv,
+        u_mv: 0.0,
+        ..right(Phosphate)
+    };
+    // Exactly 1 pH apart, exactly ±2 000 mV, exactly 1 mV apart, a u of 0: lines to be judged, not refusals.
+    for readings in [
+        [bare(6.0, 58.0), bare(7.0, 0.0)],
+        [bare(4.0, 2_000.0), bare(7.0, -2_000.0)],
+        [bare(4.0, 1.0), bare(7.0, 0.0)],
+    ] {
+        assert!(
+            fit(&readings, 7.0, None, &Limits::default()).is_ok(),
+            "{readings:?}"
+        );
+    }
+}
+
+#[test]
 fn one_buffer_moves_the_offset_and_keeps_the_slope() {
     let before = ElectrodeLine {
         offset_mv: -9.0,
@@ -426,7 +447,7 @@ fn solution(name: &str, value: f64, mv: f64) -> StandardReading {
         name: name.to_owned(),
         lot: None,
         value,
-        u_value: 2.0,
+        u_value: 3.0,
         value_per_c: -1.8,
         mv,
         u_mv: 0.5,
@@ -440,8 +461,8 @@ fn an_orp_probe_has_an_offset_and_no_slope() {
     let fit = fit_orp(&[solution("zobell", 225.3, 229.1)], &Limits::default()).unwrap();
     assert_eq!(fit.verdict, Verdict::Accepted);
     assert!((fit.line.offset_mv - 3.8).abs() < 1e-12);
-    // 0.5² + 2² + (1.8·0.5)² = 5.06 mV²
-    assert!((fit.line.var_offset_mv2 - 5.06).abs() < 1e-12);
+    // 0.5² + 3² + (1.8·0.5)² = 10.06 mV²
+    assert!((fit.line.var_offset_mv2 - 10.06).abs() < 1e-12);
     assert!(
         (fit.line.slope - 1.0).abs() < 1e-15
             && fit.line.var_slope.abs() < 1e-300
@@ -490,8 +511,8 @@ fn two_solutions_test_the_metal() {
     assert_eq!(fit.verdict, Verdict::AcceptedWithWarning);
     assert!((fit.line.offset_mv + 0.65).abs() < 1e-12);
     assert_span(fit.span, [225.3, 470.0]);
-    // χ² = 2·7.35²/5.06 = 21.353; one degree of freedom; 5.06·21.353 = 108.045 mV², by hand.
-    assert!((fit.chi2 - 21.352_77).abs() < 1e-4);
+    // χ² = 2·7.35²/10.06 = 10.740; one degree of freedom; 10.06·10.740 = 108.045 mV², by hand.
+    assert!((fit.chi2 - 10.740_06).abs() < 1e-4);
     assert!((fit.line.var_offset_mv2 - 108.045).abs() < 1e-3);
     assert!((fit.residuals_mv[0] - 7.35).abs() < 1e-9 && (fit.residuals_mv[1] + 7.35).abs() < 1e-9);
 }
@@ -504,6 +525,49 @@ fn residuals_in_ph_say_which_buffer_reads_high() {
     let ph = fit.residuals_ph(&readings);
     assert!(ph[1] > 0.03 && ph[0] < 0.0 && ph[2] < 0.0, "{ph:?}");
     assert!((ph[1] * fit.line.slope * 59.159_35 + fit.residuals_mv[1]).abs() < 1e-4);
+}
+
+#[test]
+fn three_solutions_share_two_degrees_of_freedom() {
+    let readings = [
+        solution("zobell", 225.3, 225.3),
+        solution("quinhydrone-4", 257.0, 263.0),
+        solution("light", 470.0, 464.0),
+    ];
+    let fit = fit_orp(&readings, &Limits::default()).unwrap();
+    // χ² = (0 + 6² + 6²)/10.06 = 7.15706; by two: 10.06·3.57853 = 36 mV², by hand.
+    assert!((fit.line.var_offset_mv2 - 36.0).abs() < 1e-9, "{fit:?}");
+    assert_eq!(
+        fit.reasons, [""; 0],
+        "the span from lowest to highest is 6 mV short, within 10 mV"
+    );
+}
+
+#[test]
+fn lack_of_fit_widens_by_chi2_over_the_degrees_of_freedom() {
+    let sharp = |kind| StandardReading {
+        u_value: 0.0,
+        u_temp_c: 0.0,
+        ..right(kind)
+    };
+    let mut readings = [Tetroxalate, Phthalate, Phosphate, Borax, Carbonate].map(sharp);
+    let exact = fit_of(&readings).line;
+    for (r, off) in readings.iter_mut().zip([0.5, -0.8, 0.3, -0.4, 0.6]) {
+        r.mv += off;
+    }
+    let bent = fit_of(&readings);
+    let grow = bent.chi2 / 3.0;
+    assert!(grow > 3.0, "χ² {}", bent.chi2);
+    for (bent, exact) in [
+        (bent.line.var_offset_mv2, exact.var_offset_mv2),
+        (bent.line.var_slope, exact.var_slope),
+        (bent.line.cov_mv, exact.cov_mv),
+    ] {
+        assert!(
+            (bent / exact / grow - 1.0).abs() < 1e-9,
+            "{bent} from {exact} by {grow}"
+        );
+    }
 }
 
 prop_compose! {
