@@ -55,7 +55,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
     let demo = DemoSite::new(context.now, args.days);
     let ledger_path = folder.join("sable-creek.db");
     let config_path = folder.join("halfcell.toml");
-    let text = demo.config_text(&folder, &ledger_path, Duration::from_secs(1));
+    let text = demo.config_text(&folder, &ledger_path, Duration::from_millis(250));
     let write =
         |error| Failure::world(format!("cannot write `{}`: {error}", config_path.display()));
     std::fs::write(&config_path, &text).map_err(write)?;

@@ -51,11 +51,12 @@ pub struct Arrival {
 /// Makes a judged reading of what arrived at `point`, under what the book says was in force at that moment.
 pub fn read(point: &Point, book: &Book, arrival: &Arrival) -> Reading {
     let mut tests = Tests::NONE;
+    let mv = usable_mv(arrival.mv, &mut tests);
     let temperature = usable_temperature(point, arrival.temperature);
-    if temperature.usable.is_none() {
+    // Where nothing came at all there is one thing to say, not two.
+    if temperature.usable.is_none() && !tests.has(Test::Gap) {
         tests.mark(Test::Temperature);
     }
-    let mv = usable_mv(arrival.mv, &mut tests);
     if book.hold_at(&point.tag, arrival.at).is_some() {
         tests.mark(Test::Hold);
     }

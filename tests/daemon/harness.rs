@@ -51,7 +51,7 @@ impl Ponds {
         for pond in ["a", "b"] {
             let device = self.folder.path().join(format!("pond-{pond}"));
             let tag = pond.to_uppercase();
-            text += &format!(
+            let one = format!(
                 r"
 [[line]]
 name = 'line-{pond}'
@@ -73,6 +73,7 @@ tolerance = 0.1
 ",
                 device.display()
             );
+            text += &one;
         }
         text
     }
