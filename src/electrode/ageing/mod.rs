@@ -1,0 +1,18 @@
+//! # Ageing: what is known of an electrode between its checks, and ahead of them
+//!
+//! in: a probe's calibrations, verifications, services, grab samples and second probes. out: offset and slope with covariance at any
+//! moment, forward (u of every value), backward (best), ahead (calibrate-by).
+//! Always: 1. time comes in, nothing reads a clock; the same input gives the same bits. 2. covariances are symmetric and positive.
+//! Not here: which calibration is in force (`history`), mV to pH (`convert`), what becomes of evidence (`watch`).
+
+mod filter;
+mod noise;
+mod observation;
+mod segment;
+mod track;
+
+pub use filter::{Matrix, State, Vector};
+pub use noise::{Noise, Prior};
+pub use observation::{Kind, Observation, Row, Seen as SeenElsewhere, observe};
+pub use segment::{Segment, u_of_value};
+pub use track::{HELD_OUT_BEYOND, Innovation, Outcome, Seen, Track};
