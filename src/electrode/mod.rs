@@ -6,9 +6,14 @@
 
 pub mod ageing;
 pub mod buffers;
+pub mod convert;
+pub mod fit;
 pub mod history;
 pub(crate) mod named;
 pub mod orp;
+pub mod slope;
+pub mod standard;
+pub mod temperature;
 pub mod units;
 
 pub use named::UnknownName;

@@ -108,6 +108,9 @@ quantity!(
 );
 
 impl Celsius {
+    /// −273.15 °C.
+    pub const ABSOLUTE_ZERO: Self = Self(-273.15);
+
     /// 25 °C, the temperature at which slopes in mV/pH are quoted.
     pub const STANDARD: Self = Self(25.0);
 
@@ -115,6 +118,16 @@ impl Celsius {
     pub const fn to_kelvin(self) -> Kelvin {
         Kelvin(self.0 + 273.15)
     }
+}
+
+impl Ohms {
+    /// A dead short.
+    pub const ZERO: Self = Self(0.0);
+}
+
+impl MillivoltsPerPh {
+    /// No slope at all: the theoretical slope at absolute zero.
+    pub const ZERO: Self = Self(0.0);
 }
 
 impl Kelvin {
