@@ -5,6 +5,7 @@
 //! Source of the equations: Kalman (1960); Joseph's stabilised update and the fixed-interval smoother in Bryson and Frazier's form
 //! (both in Gelb (ed.), Applied Optimal Estimation, 1974; from memory), which equals Rauch, Tung and Striebel's and needs no inverse.
 
+use super::draws::Draws;
 use super::noise::{Noise, Prior};
 
 /// Offset mV, its drift mV/day, slope, its rate beyond the mean 1/day.
@@ -82,6 +83,22 @@ impl Passage {
         let [g0, g1] = self.g;
         let [f0, f1] = self.phi;
         [x[0] + g0 * x[1], f0 * x[1], x[2] + g1 * x[3], f1 * x[3]]
+    }
+
+    /// One electrode's state after this passage, drawn at random.
+    pub(super) fn draw(&self, x: &Vector, draws: &mut Draws) -> Vector {
+        let mut after = self.forward(x);
+        after[SLOPE] += self.drive;
+        for (block, q) in self.q.iter().enumerate() {
+            // Cholesky of [a b; b c]
+            let [a, b, c] = *q;
+            if a > 0.0 {
+                let (first, second) = (draws.normal(), draws.normal());
+                after[2 * block] += a.sqrt() * first;
+                after[2 * block + 1] += b / a.sqrt() * first + (c - b * b / a).max(0.0).sqrt() * second;
+            }
+        }
+        after
     }
 
     /// Fᵀ x.
@@ -185,6 +202,27 @@ impl State {
             variance,
         };
         (Self { mean, cov }, update)
+    }
+
+    /// One electrode that may be so, drawn at random.
+    pub(super) fn draw(&self, draws: &mut Draws) -> Vector {
+        // x = mean + L z, cov = L Lᵀ; a direction without variance stays at the mean.
+        let mut lower = [[0.0; 4]; 4];
+        for i in 0..4 {
+            for j in 0..=i {
+                let done: f64 = (0..j).map(|k| lower[i][k] * lower[j][k]).sum();
+                let rest = self.cov[i][j] - done;
+                lower[i][j] = if i == j {
+                    rest.max(0.0).sqrt()
+                } else if lower[j][j] > 0.0 {
+                    rest / lower[j][j]
+                } else {
+                    0.0
+                };
+            }
+        }
+        let z: Vector = std::array::from_fn(|_| draws.normal());
+        std::array::from_fn(|i| self.mean[i] + dot(&lower[i], &z))
     }
 
     /// This (filtered) state with what later observations say of it.

@@ -5,13 +5,19 @@
 //! Always: 1. time comes in, nothing reads a clock; the same input gives the same bits. 2. covariances are symmetric and positive.
 //! Not here: which calibration is in force (`history`), mV to pH (`convert`), what becomes of evidence (`watch`).
 
+mod draws;
 mod filter;
+mod forecast;
+mod learn;
 mod noise;
 mod observation;
 mod segment;
 mod track;
 
+pub use draws::Draws;
 pub use filter::{Matrix, State, Vector};
+pub use forecast::{CalibrateBy, Demands, Reason, calibrate_by};
+pub use learn::learn;
 pub use noise::{Noise, Prior};
 pub use observation::{Kind, Observation, Row, Seen as SeenElsewhere, observe};
 pub use segment::{Segment, u_of_value};

@@ -9,6 +9,7 @@ use crate::electrode::history::{
     Calibration, Dated, EventId, Grab, ProbeHistory, ProbeKind, Service, StandardReading,
     Verification,
 };
+use crate::electrode::slope::SLOPE_PER_KELVIN;
 use crate::electrode::units::Timestamp;
 
 /// One standard read: `mv = h[0]·offset + h[1]·slope + noise`.
@@ -66,12 +67,10 @@ const MIXING_PH: f64 = 0.02;
 const MIXING_ORP_MV: f64 = 5.0;
 /// Standard uncertainty of a settled signal in the liquid, mV (common practice).
 const SIGNAL_MV: f64 = 0.3;
-/// ln(10)·R/F, mV/(pH·K); R and F exact (CODATA 2022).
-pub(super) const NERNST_MV_PER_PH_K: f64 = std::f64::consts::LN_10 * 8.314_462_618_153_24 / 96_485.332_123_310_01 * 1_000.0;
 
 /// k(T), mV/pH.
 pub(super) fn k_mv_per_ph(temp_c: f64) -> f64 {
-    NERNST_MV_PER_PH_K * (temp_c + 273.15)
+    SLOPE_PER_KELVIN * (temp_c + 273.15)
 }
 
 /// Rows of standards: `E = offset + slope·k(T)(pH_iso − pH)`, variance `u_E² + k²·u_pH² + (∂x/∂T)²·u_T²` at slope 1.
@@ -82,7 +81,7 @@ fn rows(readings: &[StandardReading], kind: ProbeKind, ph_iso: f64) -> Vec<Row> 
             ProbeKind::Ph => {
                 let k = k_mv_per_ph(r.temp_c);
                 let away = ph_iso - r.value;
-                let dx_dt = away * NERNST_MV_PER_PH_K - k * r.value_per_c;
+                let dx_dt = away * SLOPE_PER_KELVIN - k * r.value_per_c;
                 Row {
                     h: [1.0, k * away],
                     y_mv: r.mv,

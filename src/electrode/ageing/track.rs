@@ -235,24 +235,12 @@ impl Track {
 
     /// States and weights `days` after a step, or at the very start.
     fn foretold(&self, previous: Option<&Step>, days: f64, extra: [f64; 2]) -> (Vec<State>, Vec<f64>) {
-        let noises = &self.prior.noises;
         let Some(previous) = previous else {
-            let states = noises.iter().map(|n| State::start(&self.prior, n)).collect();
+            let noises = self.prior.noises.iter();
+            let states = noises.map(|n| State::start(&self.prior, n)).collect();
             return (states, self.prior.shares.clone());
         };
-        let states = noises
-            .iter()
-            .zip(&previous.states)
-            .map(|(noise, state)| state.advanced(&Passage::new(noise, days, extra)))
-            .collect();
-        let turned = self.prior.turnover(days);
-        let weights = previous
-            .weights
-            .iter()
-            .zip(&self.prior.shares)
-            .map(|(w, share)| (1.0 - turned) * w + turned * share)
-            .collect();
-        (states, weights)
+        self.prior.advanced(&previous.states, &previous.weights, days, extra)
     }
 
     /// The backward pass: adjoints of every set's filter, and smoothed weights.
@@ -385,9 +373,9 @@ impl Track {
             .count()
     }
 
-    /// When the last event was, which may be a service.
-    pub fn last(&self) -> Option<Timestamp> {
-        self.steps.last().map(|s| s.seen.at)
+    /// When the last event at or before `t` was, which may be a service.
+    pub fn last_until(&self, t: Timestamp) -> Option<Timestamp> {
+        self.known_at(t).map(|(_, step)| step.seen.at)
     }
 
     /// Logarithm of the marginal likelihood of all events that count.
@@ -427,6 +415,31 @@ impl Track {
             q_slope_rate: mean(|n| n.q_slope_rate),
             slope_tau_days: mean(|n| n.slope_tau_days),
         }
+    }
+}
+
+impl Prior {
+    /// Every set's state and weight after `days` without an event.
+    pub(super) fn advanced(
+        &self,
+        states: &[State],
+        weights: &[f64],
+        days: f64,
+        extra: [f64; 2],
+    ) -> (Vec<State>, Vec<f64>) {
+        let states = self
+            .noises
+            .iter()
+            .zip(states)
+            .map(|(noise, state)| state.advanced(&Passage::new(noise, days, extra)))
+            .collect();
+        let turned = self.turnover(days);
+        let weights = weights
+            .iter()
+            .zip(&self.shares)
+            .map(|(w, share)| (1.0 - turned) * w + turned * share)
+            .collect();
+        (states, weights)
     }
 }
 
