@@ -1,0 +1,3 @@
+//! The ageing model: how honest u, best and calibrate-by are on electrodes whose truth is known; its laws; other people's arithmetic.
+
+mod study;
