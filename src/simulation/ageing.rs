@@ -89,7 +89,9 @@ impl Life {
             let mut shock = draws.normal();
             let mut rate = drift;
             match way {
-                Ageing::Ordinary => drift += -drift * dt / 60.0 + 0.08 * (2.0 * dt / 60.0).sqrt() * draws.normal(),
+                Ageing::Ordinary => {
+                    drift += -drift * dt / 60.0 + 0.08 * (2.0 * dt / 60.0).sqrt() * draws.normal()
+                }
                 Ageing::HeavyTailed => {
                     // Student's t with 3 degrees, scaled to unit variance.
                     let chi2 = (0..3).map(|_| draws.normal().powi(2)).sum::<f64>();
@@ -110,20 +112,27 @@ impl Life {
                 Ageing::FoulingReference => rate += side * severity * 0.8 * since / 100.0,
                 Ageing::WearingGlass => {}
                 Ageing::Jumping => {
-                    if draws.uniform() < dt / 90.0 {
+                    if draws.uniform() < dt / 240.0 {
                         level += (5.0 + 10.0 * draws.uniform()) * draws.normal().signum();
                     }
                 }
                 Ageing::Regimes => {
                     if regime.1 <= t {
-                        regime = (if regime.0 > 1.0 { 0.4 } else { 2.2 }, t + 50.0 + 80.0 * draws.uniform());
+                        regime = (
+                            if regime.0 > 1.0 { 0.4 } else { 2.2 },
+                            t + 50.0 + 80.0 * draws.uniform(),
+                        );
                     }
                     shock *= regime.0;
                     rate = 0.0;
                 }
             }
             level += rate * dt + walk * dt.sqrt() * shock;
-            let worn = if way == Ageing::WearingGlass { severity * 0.06 * since / 60.0 } else { 0.0 };
+            let worn = if way == Ageing::WearingGlass {
+                severity * 0.06 * since / 60.0
+            } else {
+                0.0
+            };
             slope += (wear - worn.min(0.10)) / 30.0 * dt + slope_walk * dt.sqrt() * draws.normal();
             life.offset_mv.push(level + tooth);
             life.slope.push(slope.max(0.5));
@@ -163,7 +172,9 @@ impl Life {
                     value: *ph,
                     u_value: 0.005,
                     value_per_c: 0.0,
-                    mv: self.mv(days, bottle, temp_c + 0.2 * draws.normal()) + junction_mv + 0.2 * draws.normal(),
+                    mv: self.mv(days, bottle, temp_c + 0.2 * draws.normal())
+                        + junction_mv
+                        + 0.2 * draws.normal(),
                     u_mv: 0.2,
                     temp_c,
                     u_temp_c: 0.2,

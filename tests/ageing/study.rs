@@ -6,8 +6,8 @@ use halfcell::electrode::ageing::{
 use halfcell::electrode::convert::{Inputs, to_ph};
 use halfcell::electrode::fit::{Limits, fit};
 use halfcell::electrode::history::{
-    Calibration, Dated, ElectrodeLine, EventId, ProbeHistory, ProbeKind, ProbeSpec, Stage,
-    Verdict, Verification,
+    Calibration, Dated, ElectrodeLine, EventId, ProbeHistory, ProbeKind, ProbeSpec, Stage, Verdict,
+    Verification,
 };
 use halfcell::electrode::orp::ReferenceElectrode;
 use halfcell::electrode::units::{Celsius, Millivolts, Timestamp};
@@ -172,7 +172,11 @@ impl Score {
     }
 }
 
-fn follow<'a>(held: &'a mut Option<Segment>, t: Timestamp, find: impl Fn(Timestamp) -> Option<Segment>) -> &'a Segment {
+fn follow<'a>(
+    held: &'a mut Option<Segment>,
+    t: Timestamp,
+    find: impl Fn(Timestamp) -> Option<Segment>,
+) -> &'a Segment {
     if held.as_ref().is_none_or(|s| !s.holds(t)) {
         *held = find(t);
     }
@@ -190,8 +194,22 @@ fn judge(kept: &Kept, prior: &Prior, tolerance: f64, score: &mut Score) {
     while days < 330.0 {
         let t = at(days);
         let cal = kept.history.calibration_at(t).unwrap();
-        let age = t.days_since(kept.history.calibrations.iter().rev().find(|c| c.at <= t).unwrap().at);
-        let third = if age < 10.0 { 0 } else if age < 20.0 { 1 } else { 2 };
+        let age = t.days_since(
+            kept.history
+                .calibrations
+                .iter()
+                .rev()
+                .find(|c| c.at <= t)
+                .unwrap()
+                .at,
+        );
+        let third = if age < 10.0 {
+            0
+        } else if age < 20.0 {
+            1
+        } else {
+            2
+        };
         junction += -junction * 0.25 + 0.0066 * draws.normal();
         let truth = 7.8 + 0.5 * (std::f64::consts::TAU * days).sin() + 0.2 * (days / 20.0).sin();
         let mv = kept.life.mv(days, truth + junction, TEMP_C) + 0.2 * draws.normal();
@@ -216,12 +234,27 @@ fn judge(kept: &Kept, prior: &Prior, tolerance: f64, score: &mut Score) {
         score.us.push(u);
         days += 0.5;
     }
-    for cal in kept.history.calibrations.iter().skip(2).filter(|c| c.fact.verdict != Verdict::Rejected) {
+    if std::env::var("NOFORE").is_ok() {
+        return;
+    }
+    for cal in kept
+        .history
+        .calibrations
+        .iter()
+        .skip(2)
+        .filter(|c| c.fact.verdict != Verdict::Rejected)
+    {
         forecast(kept, &track, cal, tolerance, score);
     }
 }
 
-fn forecast(kept: &Kept, track: &Track, cal: &Dated<Calibration>, tolerance: f64, score: &mut Score) {
+fn forecast(
+    kept: &Kept,
+    track: &Track,
+    cal: &Dated<Calibration>,
+    tolerance: f64,
+    score: &mut Score,
+) {
     let line = &cal.fact.line;
     let demands = Demands {
         kind: ProbeKind::Ph,
@@ -254,12 +287,28 @@ fn forecast(kept: &Kept, track: &Track, cal: &Dated<Calibration>, tolerance: f64
 
 #[test]
 fn the_study() {
-    let prior = Prior::of(ProbeKind::Ph);
+    let mut prior = Prior::of(ProbeKind::Ph);
+    if let Ok(days) = std::env::var("REGIME") {
+        let parts: Vec<f64> = days.split(',').map(|p| p.parse().unwrap()).collect();
+        prior.temperaments[0].share = parts[0];
+        prior.temperaments[1].share = 1.0 - parts[0];
+        prior.temperaments[0].regime_days = parts[1];
+        prior.temperaments[1].regime_days = parts[2];
+    }
+    if let Ok(set) = std::env::var("ONLY") {
+        let set: usize = set.parse().unwrap();
+        prior.noises = vec![prior.noises[set]];
+        prior.shares = vec![1.0];
+    }
+    let n_lives: u64 = std::env::var("LIVES").map_or(30, |n| n.parse().unwrap());
     for (checks, tolerance) in [(0.0, 0.2), (0.5, 0.1)] {
-        println!("checks {checks} tolerance {tolerance}\n{}", Score::heading());
+        println!(
+            "checks {checks} tolerance {tolerance}\n{}",
+            Score::heading()
+        );
         for way in Ageing::ALL {
             let mut score = Score::default();
-            for n in 0..30 {
+            for n in 0..n_lives {
                 let kept = keep(way, 1000 + n, checks);
                 judge(&kept, &prior, tolerance, &mut score);
             }

@@ -66,7 +66,11 @@ impl Passage {
         let offset = wandering(days, noise.tau_days);
         let slope = wandering(days, noise.slope_tau_days);
         let block = |w: &Wandering, level: f64, rate: f64| {
-            [level * days + rate * w.var_level, rate * w.cov, rate * w.var_rate]
+            [
+                level * days + rate * w.var_level,
+                rate * w.cov,
+                rate * w.var_rate,
+            ]
         };
         Self {
             g: [offset.g, slope.g],
@@ -95,7 +99,8 @@ impl Passage {
             if a > 0.0 {
                 let (first, second) = (draws.normal(), draws.normal());
                 after[2 * block] += a.sqrt() * first;
-                after[2 * block + 1] += b / a.sqrt() * first + (c - b * b / a).max(0.0).sqrt() * second;
+                after[2 * block + 1] +=
+                    b / a.sqrt() * first + (c - b * b / a).max(0.0).sqrt() * second;
             }
         }
         after
@@ -180,7 +185,8 @@ impl State {
     /// After one scalar observation of unit variance.
     pub(super) fn updated(&self, row: &Scalar) -> (Self, Update) {
         let h = row.h;
-        let ph: Vector = std::array::from_fn(|i| self.cov[i][OFFSET] * h[0] + self.cov[i][SLOPE] * h[1]);
+        let ph: Vector =
+            std::array::from_fn(|i| self.cov[i][OFFSET] * h[0] + self.cov[i][SLOPE] * h[1]);
         let variance = h[0] * ph[OFFSET] + h[1] * ph[SLOPE] + 1.0;
         let innovation = row.y - h[0] * self.mean[OFFSET] - h[1] * self.mean[SLOPE];
         let gain: Vector = std::array::from_fn(|i| ph[i] / variance);
@@ -231,8 +237,11 @@ impl State {
         // x_s = x − P λ,  P_s = P − P Λ P
         let p = &self.cov;
         let mean = std::array::from_fn(|i| self.mean[i] - dot(&p[i], &later.lambda));
-        let taken = congruence(&later.information, |x| std::array::from_fn(|i| dot(&p[i], x)));
-        let mut cov: Matrix = std::array::from_fn(|i| std::array::from_fn(|j| p[i][j] - taken[i][j]));
+        let taken = congruence(&later.information, |x| {
+            std::array::from_fn(|i| dot(&p[i], x))
+        });
+        let mut cov: Matrix =
+            std::array::from_fn(|i| std::array::from_fn(|j| p[i][j] - taken[i][j]));
         for (i, row) in cov.iter_mut().enumerate() {
             row[i] = row[i].max(0.0);
         }

@@ -9,6 +9,7 @@ use super::noise::Prior;
 use super::observation::k_mv_per_ph;
 use super::segment::Moments;
 use super::track::Track;
+use super::weights::Weights;
 use crate::electrode::history::{ElectrodeLine, ProbeKind};
 use crate::electrode::units::Timestamp;
 
@@ -78,7 +79,13 @@ pub fn calibrate_by(
     let start = track.last_until(from)?.max(since);
     let (states, weights) = track.filtered_sets(start)?;
     let times = steps();
-    let futures = Futures::draw(&states, &weights, track.prior(), &times, &Error::new(line, demands));
+    let futures = Futures::draw(
+        &states,
+        &weights,
+        track.prior(),
+        &times,
+        &Error::new(line, demands),
+    );
     let mut by = (HORIZON_DAYS, Reason::Age);
     let mut sooner = |days: Option<f64>, reason: Reason| {
         if let Some(days) = days.filter(|d| *d < by.0) {
@@ -87,11 +94,14 @@ pub fn calibrate_by(
     };
     let u = |t: f64| {
         let (states, weights) = track.prior().advanced(&states, &weights, t, [0.0; 2]);
-        Error::new(line, demands).u(&Moments::mixed(&states, &weights))
+        Error::new(line, demands).u(&Moments::mixed(&states, &weights.by_set()))
     };
     sooner(crossing(&times, u, demands.tolerance), Reason::Uncertainty);
     sooner(first_above(&times, &futures.slope_out, 0.5), Reason::Slope);
-    sooner(first_above(&times, &futures.offset_out, 0.5), Reason::Offset);
+    sooner(
+        first_above(&times, &futures.offset_out, 0.5),
+        Reason::Offset,
+    );
     let earliest = first_above(&times, &futures.passed, 0.05).unwrap_or(HORIZON_DAYS);
     let latest = first_above(&times, &futures.passed, 0.95).unwrap_or(HORIZON_DAYS);
     Some(CalibrateBy {
@@ -133,7 +143,10 @@ impl<'a> Error<'a> {
         let h = match demands.kind {
             ProbeKind::Ph => {
                 let k = k_mv_per_ph(demands.usual_temp_c);
-                [-1.0 / (line.slope * k), -(demands.ph_iso - demands.usual_ph) / line.slope]
+                [
+                    -1.0 / (line.slope * k),
+                    -(demands.ph_iso - demands.usual_ph) / line.slope,
+                ]
             }
             ProbeKind::Orp => [1.0, 0.0],
         };
@@ -164,23 +177,36 @@ struct Futures {
 }
 
 impl Futures {
-    fn draw(states: &[State], weights: &[f64], prior: &Prior, times: &[f64], error: &Error<'_>) -> Self {
+    fn draw(
+        states: &[State],
+        weights: &Weights,
+        prior: &Prior,
+        times: &[f64],
+        error: &Error<'_>,
+    ) -> Self {
         let passages: Vec<Vec<Passage>> = prior
             .noises
             .iter()
-            .map(|noise| times.windows(2).map(|w| Passage::new(noise, w[1] - w[0], [0.0; 2])).collect())
+            .map(|noise| {
+                times
+                    .windows(2)
+                    .map(|w| Passage::new(noise, w[1] - w[0], [0.0; 2]))
+                    .collect()
+            })
             .collect();
         let mut futures = Self {
             passed: vec![0.0; times.len()],
             slope_out: vec![0.0; times.len()],
             offset_out: vec![0.0; times.len()],
         };
+        let (sets, temperaments) = (weights.by_set(), weights.by_temperament());
         let mut draws = Draws::new(SEED);
         #[expect(clippy::cast_precision_loss, reason = "some hundred paths")]
         let (one, n) = (1.0 / N_PATHS as f64, N_PATHS as f64);
         for path in 0..N_PATHS {
             #[expect(clippy::cast_precision_loss, reason = "some hundred paths")]
-            let mut set = pick(weights, (path as f64 + 0.5) / n);
+            let mut set = pick(&sets, (path as f64 + 0.5) / n);
+            let temperament = &prior.temperaments[pick(&temperaments, draws.uniform())];
             let mut x = states[set].draw(&mut draws);
             let junction = error.demands.u_junction * draws.normal();
             let mut survives = 1.0;
@@ -188,13 +214,15 @@ impl Futures {
             for (place, _) in times.iter().enumerate() {
                 if place > 0 {
                     let days = times[place] - times[place - 1];
-                    if draws.uniform() < prior.turnover(days) {
+                    if draws.uniform() < temperament.turnover(days) {
                         set = pick(&prior.shares, draws.uniform());
                     }
                     x = passages[set][place - 1].draw(&x, &mut draws);
                     let now = error.at(x[OFFSET], x[SLOPE]) + junction;
                     let noise = &prior.noises[set];
-                    let spread = (error.h[0].powi(2) * noise.q_offset + error.h[1].powi(2) * noise.q_slope) * days;
+                    let spread = (error.h[0].powi(2) * noise.q_offset
+                        + error.h[1].powi(2) * noise.q_slope)
+                        * days;
                     survives *= 1.0 - passes(before, now, error.demands.tolerance, spread);
                     before = now;
                 } else if before.abs() > error.demands.tolerance {
@@ -249,7 +277,11 @@ fn crossing(times: &[f64], f: impl Fn(f64) -> f64, level: f64) -> Option<f64> {
     let (mut low, mut high) = (times[place - 1], times[place]);
     for _ in 0..20 {
         let middle = 0.5 * (low + high);
-        if f(middle) > level { high = middle } else { low = middle }
+        if f(middle) > level {
+            high = middle
+        } else {
+            low = middle
+        }
     }
     Some(high)
 }

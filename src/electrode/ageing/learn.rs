@@ -19,7 +19,11 @@ const N_ROUNDS: usize = 3;
 pub fn learn(probes: &[Vec<Observation>], practice: &Prior) -> Prior {
     let mut prior = practice.clone();
     for _ in 0..N_ROUNDS {
-        let mut shares: Vec<f64> = practice.shares.iter().map(|s| s * PRACTICE_WEIGHS).collect();
+        let mut shares: Vec<f64> = practice
+            .shares
+            .iter()
+            .map(|s| s * PRACTICE_WEIGHS)
+            .collect();
         for observations in probes {
             let Some(track) = Track::run(observations, &prior) else {
                 continue;

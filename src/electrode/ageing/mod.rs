@@ -13,12 +13,13 @@ mod noise;
 mod observation;
 mod segment;
 mod track;
+mod weights;
 
 pub use draws::Draws;
 pub use filter::{Matrix, State, Vector};
 pub use forecast::{CalibrateBy, Demands, Reason, calibrate_by};
 pub use learn::learn;
-pub use noise::{Noise, Prior};
+pub use noise::{Noise, Prior, Temperament};
 pub use observation::{Kind, Observation, Row, Seen as SeenElsewhere, observe};
 pub use segment::{Segment, u_of_value};
 pub use track::{HELD_OUT_BEYOND, Innovation, Outcome, Seen, Track};

@@ -90,14 +90,14 @@ const SLOPE_SETS: [(f64, f64, f64); 3] = [
 const SLOPE_SHARES: [f64; 3] = [0.4, 0.45, 0.15];
 /// Factors on the ordinary walk of the offset, and their shares.
 const WANDERS: [(f64, f64); 5] = [
-    (0.25, 0.12),
-    (0.5, 0.24),
-    (1.0, 0.34),
-    (2.0, 0.22),
-    (4.0, 0.08),
+    (0.3, 0.07),
+    (0.55, 0.20),
+    (1.0, 0.42),
+    (1.8, 0.23),
+    (3.3, 0.08),
 ];
 /// Standard deviations of the offset's drift, mV/day, and their shares: steady, ordinary, runaway (a reference that fouls or is poisoned).
-const DRIFTS: [(f64, f64); 3] = [(0.02, 0.35), (0.10, 0.45), (0.50, 0.20)];
+const DRIFTS: [(f64, f64); 3] = [(0.02, 0.38), (0.10, 0.46), (0.50, 0.16)];
 
 /// A bank: sets of noise with the share each has before this electrode is known. [`learn`](super::learn::learn) moves the shares
 /// towards what a site's electrodes of the kind have shown.
@@ -113,9 +113,37 @@ pub struct Prior {
     pub start_slope: f64,
     /// Its standard deviation.
     pub start_slope_sd: f64,
-    /// Mean time an electrode keeps to one set before it turns to another, days; infinite for never.
+    /// How faithful electrodes are to one set.
+    pub temperaments: Vec<Temperament>,
+}
+
+/// How faithful an electrode is to one set of noise.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Temperament {
+    /// Share of electrodes that are so; the shares of all sum to 1.
+    pub share: f64,
+    /// Mean time with one set before turning to another, days; infinite for never.
     pub regime_days: f64,
 }
+
+impl Temperament {
+    /// Probability of a turn in `days`.
+    pub(super) fn turnover(&self, days: f64) -> f64 {
+        -(-days / self.regime_days).exp_m1()
+    }
+}
+
+/// Steady, as most are for life, and changeable (common practice, no source).
+const TEMPERAMENTS: [Temperament; 2] = [
+    Temperament {
+        share: 0.6,
+        regime_days: 3_000.0,
+    },
+    Temperament {
+        share: 0.4,
+        regime_days: 120.0,
+    },
+];
 
 impl Prior {
     /// What practice says of a kind.
@@ -123,7 +151,9 @@ impl Prior {
         let (noises, shares): (Vec<_>, Vec<_>) = match kind {
             ProbeKind::Ph => WANDERS
                 .iter()
-                .flat_map(|&(wander, p)| DRIFTS.iter().map(move |&(drift, r)| (wander, drift, p * r)))
+                .flat_map(|&(wander, p)| {
+                    DRIFTS.iter().map(move |&(drift, r)| (wander, drift, p * r))
+                })
                 .flat_map(|(wander, drift, p)| {
                     SLOPE_SHARES
                         .iter()
@@ -146,7 +176,7 @@ impl Prior {
             start_offset_sd_mv: 20.0,
             start_slope: if kind == ProbeKind::Ph { 0.98 } else { 1.0 },
             start_slope_sd: if kind == ProbeKind::Ph { 0.04 } else { 0.0 },
-            regime_days: REGIME_DAYS,
+            temperaments: TEMPERAMENTS.to_vec(),
         }
     }
 
@@ -158,15 +188,7 @@ impl Prior {
             ..Self::of(kind)
         }
     }
-
-    /// Share of an electrode's sets that turn over in `days`.
-    pub(super) fn turnover(&self, days: f64) -> f64 {
-        -(-days / self.regime_days).exp_m1()
-    }
 }
-
-/// Mean time in one regime: an electrode lives about a year and changes its ways once or twice (common practice).
-const REGIME_DAYS: f64 = 200.0;
 
 /// Jump variance a service brings: offset mV², slope squared. Common practice, no source.
 pub(super) fn service_break(service: Service) -> [f64; 2] {

@@ -85,7 +85,9 @@ fn rows(readings: &[StandardReading], kind: ProbeKind, ph_iso: f64) -> Vec<Row> 
                 Row {
                     h: [1.0, k * away],
                     y_mv: r.mv,
-                    var_mv2: r.u_mv.powi(2) + (k * r.u_value).powi(2) + (dx_dt * r.u_temp_c).powi(2),
+                    var_mv2: r.u_mv.powi(2)
+                        + (k * r.u_value).powi(2)
+                        + (dx_dt * r.u_temp_c).powi(2),
                 }
             }
             ProbeKind::Orp => Row {
@@ -128,7 +130,12 @@ impl Observation {
 
     /// From a verification.
     pub fn verification(fact: &Dated<Verification>, kind: ProbeKind, ph_iso: f64) -> Self {
-        Self::standards(fact, Kind::Verification, &fact.fact.readings, (kind, ph_iso))
+        Self::standards(
+            fact,
+            Kind::Verification,
+            &fact.fact.readings,
+            (kind, ph_iso),
+        )
     }
 
     fn standards<T>(
@@ -162,7 +169,12 @@ impl Observation {
     }
 
     /// From a grab sample and the probe's signal at that time.
-    pub fn grab(fact: &Dated<Grab>, mv: f64, temp_c: f64, (kind, ph_iso): (ProbeKind, f64)) -> Self {
+    pub fn grab(
+        fact: &Dated<Grab>,
+        mv: f64,
+        temp_c: f64,
+        (kind, ph_iso): (ProbeKind, f64),
+    ) -> Self {
         let seen = Seen {
             mv,
             temp_c,
@@ -200,13 +212,16 @@ impl Observation {
                 Row {
                     h: [1.0, k * (ph_iso - seen.value)],
                     y_mv: seen.mv,
-                    var_mv2: k * k * (seen.u_value.powi(2) + MIXING_PH * MIXING_PH) + SIGNAL_MV * SIGNAL_MV,
+                    var_mv2: k * k * (seen.u_value.powi(2) + MIXING_PH * MIXING_PH)
+                        + SIGNAL_MV * SIGNAL_MV,
                 }
             }
             ProbeKind::Orp => Row {
                 h: [1.0, 0.0],
                 y_mv: seen.mv - seen.value,
-                var_mv2: seen.u_value.powi(2) + MIXING_ORP_MV * MIXING_ORP_MV + SIGNAL_MV * SIGNAL_MV,
+                var_mv2: seen.u_value.powi(2)
+                    + MIXING_ORP_MV * MIXING_ORP_MV
+                    + SIGNAL_MV * SIGNAL_MV,
             },
         };
         Self {
@@ -242,7 +257,10 @@ pub fn observe(history: &ProbeHistory, seen: &[Observation], until: Timestamp) -
         .filter(|o| o.at <= until)
         .collect();
     for observation in &mut all {
-        observation.confirmed |= history.confirmed.iter().any(|c| c.fact == observation.event);
+        observation.confirmed |= history
+            .confirmed
+            .iter()
+            .any(|c| c.fact == observation.event);
     }
     in_order(&mut all);
     all
@@ -251,9 +269,11 @@ pub fn observe(history: &ProbeHistory, seen: &[Observation], until: Timestamp) -
 /// By time, then number, then kind; within that by what was read, so that entry order never shows.
 pub(super) fn in_order(observations: &mut [Observation]) {
     observations.sort_by(|a, b| {
-        (a.at, a.event, a.kind).cmp(&(b.at, b.event, b.kind)).then_with(|| {
-            let key = |o: &Observation| o.rows.first().map_or(0.0, |r| r.y_mv);
-            key(a).total_cmp(&key(b))
-        })
+        (a.at, a.event, a.kind)
+            .cmp(&(b.at, b.event, b.kind))
+            .then_with(|| {
+                let key = |o: &Observation| o.rows.first().map_or(0.0, |r| r.y_mv);
+                key(a).total_cmp(&key(b))
+            })
     });
 }

@@ -1,6 +1,6 @@
 //! # Offset and slope with their covariance over a stretch of time, cheap enough for every reading
 //!
-//! A track's figures move smoothly between events, so over some hours a straight line in time carries each of the five: per reading
+//! A track's figures move smoothly between events, so over a day a straight line in time carries each of the five: per reading
 //! that is five multiplications and additions.
 
 use super::filter::{OFFSET, SLOPE, State};
@@ -8,8 +8,8 @@ use crate::electrode::convert::Converted;
 use crate::electrode::history::ElectrodeLine;
 use crate::electrode::units::Timestamp;
 
-/// Longest stretch, ms: six hours.
-const LONGEST_MS: i64 = 6 * 3_600_000;
+/// Longest stretch, ms: a day.
+const LONGEST_MS: i64 = 86_400_000;
 
 /// Mean and covariance of offset and slope: an [`ElectrodeLine`], as conversion takes it.
 pub(super) type Moments = ElectrodeLine;
@@ -27,7 +27,11 @@ pub struct Segment {
 
 impl Segment {
     /// The stretch around `t` between the event before and the one after.
-    pub(super) fn around(t: Timestamp, after: Timestamp, next: Option<Timestamp>) -> (Timestamp, Timestamp) {
+    pub(super) fn around(
+        t: Timestamp,
+        after: Timestamp,
+        next: Option<Timestamp>,
+    ) -> (Timestamp, Timestamp) {
         let n = (t.ms() - after.ms()) / LONGEST_MS;
         let from = after.plus_ms(n * LONGEST_MS);
         let until = from.plus_ms(LONGEST_MS);
@@ -35,7 +39,7 @@ impl Segment {
     }
 
     pub(super) fn between(from: Timestamp, start: Moments, until: Timestamp, end: Moments) -> Self {
-        #[expect(clippy::cast_precision_loss, reason = "at most six hours in ms")]
+        #[expect(clippy::cast_precision_loss, reason = "at most a day in ms")]
         let ms = (until.ms() - 1 - from.ms()).max(1) as f64;
         let per_ms = |pick: fn(&Moments) -> f64| (pick(&end) - pick(&start)) / ms;
         Self {
@@ -59,7 +63,7 @@ impl Segment {
 
     /// Offset and slope with covariance at `t`, which should lie on it.
     pub fn line_at(&self, t: Timestamp) -> ElectrodeLine {
-        #[expect(clippy::cast_precision_loss, reason = "at most six hours in ms")]
+        #[expect(clippy::cast_precision_loss, reason = "at most a day in ms")]
         let ms = t.ms().saturating_sub(self.from.ms()) as f64;
         let (a, b) = (&self.start, &self.per_ms);
         ElectrodeLine {
@@ -107,7 +111,9 @@ impl Moments {
 
     /// Variance of `h[0]·offset + h[1]·slope`.
     pub(super) fn variance_along(&self, h: [f64; 2]) -> f64 {
-        h[0] * h[0] * self.var_offset_mv2 + 2.0 * h[0] * h[1] * self.cov_mv + h[1] * h[1] * self.var_slope
+        h[0] * h[0] * self.var_offset_mv2
+            + 2.0 * h[0] * h[1] * self.cov_mv
+            + h[1] * h[1] * self.var_slope
     }
 }
 

@@ -12,6 +12,7 @@ use super::filter::{Adjoint, Passage, Scalar, State, Update};
 use super::noise::{Noise, Prior, UNDECLARED_BREAK};
 use super::observation::{Kind, Observation, in_order};
 use super::segment::{Moments, Segment};
+use super::weights::Weights;
 use crate::electrode::history::EventId;
 use crate::electrode::units::Timestamp;
 
@@ -68,7 +69,7 @@ struct Step {
     extra: [f64; 2],
     states: Vec<State>,
     updates: Vec<Vec<Update>>,
-    weights: Vec<f64>,
+    weights: Weights,
     /// Likelihood of the event under each set, relative to the largest.
     likelihoods: Vec<f64>,
     log_likelihood: f64,
@@ -79,7 +80,7 @@ struct Step {
 struct Later {
     /// Just before the step's own observations.
     before: Vec<Adjoint>,
-    weights: Vec<f64>,
+    weights: Weights,
 }
 
 /// An electrode through time.
@@ -158,7 +159,9 @@ impl Track {
                 Outcome::Taken
             };
             let mut step = other.step(place, event, outcome);
-            step.seen.innovations.clone_from(&self.steps[place].seen.innovations);
+            step.seen
+                .innovations
+                .clone_from(&self.steps[place].seen.innovations);
             other.steps.push(step);
         }
         let step = other.step(index, &ready[index], Outcome::Taken);
@@ -166,7 +169,8 @@ impl Track {
             return None;
         }
         let replaced = self.steps.drain(held..).enumerate();
-        self.as_known.extend(replaced.map(|(n, step)| (held + n, step)));
+        self.as_known
+            .extend(replaced.map(|(n, step)| (held + n, step)));
         self.steps.extend(other.steps.drain(held..));
         Some(step)
     }
@@ -190,27 +194,34 @@ impl Track {
         }
         let foretold = self.foretold(previous, days, extra);
         let mut states: Vec<State> = foretold.0.iter().map(|s| s.broken(jump)).collect();
-        let mut weights = foretold.1;
-        let innovations = innovations(observation, &Moments::mixed(&states, &weights));
+        let innovations = innovations(observation, &Moments::mixed(&states, &foretold.1.by_set()));
         let mut updates = vec![Vec::new(); states.len()];
         let mut log_likelihoods = vec![0.0; states.len()];
         if outcome != Outcome::HeldOut {
-            for ((state, updates), log) in states.iter_mut().zip(&mut updates).zip(&mut log_likelihoods) {
+            for ((state, updates), log) in states
+                .iter_mut()
+                .zip(&mut updates)
+                .zip(&mut log_likelihoods)
+            {
                 for scalar in &event.scalars {
                     let (after, update) = state.updated(scalar);
                     // ln N(ν; 0, S)
-                    *log -= 0.5 * (update.variance.ln() + update.innovation.powi(2) / update.variance);
+                    *log -=
+                        0.5 * (update.variance.ln() + update.innovation.powi(2) / update.variance);
                     *state = after;
                     updates.push(update);
                 }
             }
         }
-        let largest = log_likelihoods.iter().copied().fold(f64::NEG_INFINITY, f64::max);
-        let likelihoods: Vec<f64> = log_likelihoods.iter().map(|l| (l - largest).exp()).collect();
-        for (weight, likelihood) in weights.iter_mut().zip(&likelihoods) {
-            *weight *= likelihood;
-        }
-        let total = normalise(&mut weights);
+        let largest = log_likelihoods
+            .iter()
+            .copied()
+            .fold(f64::NEG_INFINITY, f64::max);
+        let likelihoods: Vec<f64> = log_likelihoods
+            .iter()
+            .map(|l| (l - largest).exp())
+            .collect();
+        let (weights, total) = foretold.1.times(&likelihoods).normalised();
         let log_likelihood = if outcome == Outcome::HeldOut {
             0.0
         } else {
@@ -234,20 +245,26 @@ impl Track {
     }
 
     /// States and weights `days` after a step, or at the very start.
-    fn foretold(&self, previous: Option<&Step>, days: f64, extra: [f64; 2]) -> (Vec<State>, Vec<f64>) {
+    fn foretold(
+        &self,
+        previous: Option<&Step>,
+        days: f64,
+        extra: [f64; 2],
+    ) -> (Vec<State>, Weights) {
         let Some(previous) = previous else {
             let noises = self.prior.noises.iter();
             let states = noises.map(|n| State::start(&self.prior, n)).collect();
-            return (states, self.prior.shares.clone());
+            return (states, Weights::start(&self.prior));
         };
-        self.prior.advanced(&previous.states, &previous.weights, days, extra)
+        self.prior
+            .advanced(&previous.states, &previous.weights, days, extra)
     }
 
     /// The backward pass: adjoints of every set's filter, and smoothed weights.
     fn look_back(&self) -> Vec<Later> {
         let n_sets = self.prior.noises.len();
         let mut adjoints = vec![Adjoint::NOTHING; n_sets];
-        let mut beta = vec![1.0; n_sets];
+        let mut beta = Weights::nothing(&self.prior);
         let mut later = Vec::with_capacity(self.steps.len());
         for (index, step) in self.steps.iter().enumerate().rev() {
             for (adjoint, updates) in adjoints.iter_mut().zip(&step.updates) {
@@ -255,11 +272,9 @@ impl Track {
                     *adjoint = adjoint.before(update);
                 }
             }
-            let mut weights: Vec<f64> = step.weights.iter().zip(&beta).map(|(w, b)| w * b).collect();
-            normalise(&mut weights);
             later.push(Later {
                 before: adjoints.clone(),
-                weights,
+                weights: step.weights.met(&beta).normalised().0,
             });
             let Some(previous) = index.checked_sub(1).map(|i| &self.steps[i]) else {
                 break;
@@ -268,16 +283,11 @@ impl Track {
             for (adjoint, noise) in adjoints.iter_mut().zip(&self.prior.noises) {
                 *adjoint = adjoint.earlier(&Passage::new(noise, days, step.extra));
             }
-            // β(h) = (1 − ε)·ℓ(h)·β'(h) + ε·Σ share·ℓ·β'
-            let turned = self.prior.turnover(days);
-            for (b, likelihood) in beta.iter_mut().zip(&step.likelihoods) {
-                *b *= likelihood;
-            }
-            let pooled: f64 = beta.iter().zip(&self.prior.shares).map(|(b, s)| b * s).sum();
-            for b in &mut beta {
-                *b = (1.0 - turned) * *b + turned * pooled;
-            }
-            normalise(&mut beta);
+            beta = beta
+                .times(&step.likelihoods)
+                .earlier(&self.prior, days)
+                .normalised()
+                .0;
         }
         later.reverse();
         later
@@ -285,7 +295,10 @@ impl Track {
 
     /// The last step at or before `t`, as known then.
     fn known_at(&self, t: Timestamp) -> Option<(usize, &Step)> {
-        let index = self.steps.partition_point(|s| s.seen.at <= t).checked_sub(1)?;
+        let index = self
+            .steps
+            .partition_point(|s| s.seen.at <= t)
+            .checked_sub(1)?;
         // What a later event put right was not known while that event was still to come.
         let step = self
             .as_known
@@ -298,14 +311,17 @@ impl Track {
     }
 
     /// Every set's state at `t` with its weight, as known then; `None` before the first event.
-    pub(super) fn filtered_sets(&self, t: Timestamp) -> Option<(Vec<State>, Vec<f64>)> {
+    pub(super) fn filtered_sets(&self, t: Timestamp) -> Option<(Vec<State>, Weights)> {
         let (_, step) = self.known_at(t)?;
         Some(self.foretold(Some(step), t.days_since(step.seen.at), [0.0; 2]))
     }
 
     /// Every set's state at `t` with its weight, as known now; `None` before the first event.
-    fn smoothed_sets(&self, t: Timestamp) -> Option<(Vec<State>, Vec<f64>)> {
-        let index = self.steps.partition_point(|s| s.seen.at <= t).checked_sub(1)?;
+    fn smoothed_sets(&self, t: Timestamp) -> Option<(Vec<State>, Weights)> {
+        let index = self
+            .steps
+            .partition_point(|s| s.seen.at <= t)
+            .checked_sub(1)?;
         let step = &self.steps[index];
         let days = t.days_since(step.seen.at);
         let Some(next) = self.steps.get(index + 1) else {
@@ -328,13 +344,13 @@ impl Track {
     /// Offset, drift, slope and rate at `t`, resting on events at or before it; `None` before the first.
     pub fn filtered_at(&self, t: Timestamp) -> Option<State> {
         let (states, weights) = self.filtered_sets(t)?;
-        Some(State::mixed(&states, &weights))
+        Some(State::mixed(&states, &weights.by_set()))
     }
 
     /// The same, resting on all events.
     pub fn smoothed_at(&self, t: Timestamp) -> Option<State> {
         let (states, weights) = self.smoothed_sets(t)?;
-        Some(State::mixed(&states, &weights))
+        Some(State::mixed(&states, &weights.by_set()))
     }
 
     /// The stretch around `t` on which offset and slope as known then may be read off with a few operations; `None` before the first event.
@@ -350,15 +366,22 @@ impl Track {
     fn segment(
         &self,
         t: Timestamp,
-        sets: impl Fn(Timestamp) -> Option<(Vec<State>, Vec<f64>)>,
+        sets: impl Fn(Timestamp) -> Option<(Vec<State>, Weights)>,
     ) -> Option<Segment> {
         let index = self.steps.partition_point(|s| s.seen.at <= t);
         let after = self.steps.get(index.checked_sub(1)?)?.seen.at;
         let next = self.steps.get(index).map(|s| s.seen.at);
         let (from, until) = Segment::around(t, after, next);
-        let moments = |t: Timestamp| sets(t).map(|(states, weights)| Moments::mixed(&states, &weights));
+        let moments = |t: Timestamp| {
+            sets(t).map(|(states, weights)| Moments::mixed(&states, &weights.by_set()))
+        };
         // The end is taken a moment before, on this side of the next event.
-        Some(Segment::between(from, moments(from)?, until, moments(until.plus_ms(-1))?))
+        Some(Segment::between(
+            from,
+            moments(from)?,
+            until,
+            moments(until.plus_ms(-1))?,
+        ))
     }
 
     /// Every event in order of time, with how far off it was and what became of it.
@@ -392,19 +415,27 @@ impl Track {
     pub(super) fn shares(&self) -> Vec<f64> {
         let mut shares = vec![0.0; self.prior.noises.len()];
         for later in &self.later {
-            for (share, weight) in shares.iter_mut().zip(&later.weights) {
+            for (share, weight) in shares.iter_mut().zip(later.weights.by_set()) {
                 *share += weight;
             }
         }
-        normalise(&mut shares);
-        shares
+        let total: f64 = shares.iter().sum();
+        shares.iter().map(|s| s / total).collect()
     }
 
     /// The noise it now believes in: intensities averaged over the bank by their weights after the last event.
     pub fn noise(&self) -> Noise {
-        let weights = self.steps.last().map_or(&self.prior.shares, |s| &s.weights);
+        let weights = self
+            .steps
+            .last()
+            .map_or_else(|| self.prior.shares.clone(), |s| s.weights.by_set());
         let mean = |pick: fn(&Noise) -> f64| {
-            self.prior.noises.iter().zip(weights).map(|(n, w)| w * pick(n)).sum()
+            self.prior
+                .noises
+                .iter()
+                .zip(&weights)
+                .map(|(n, w)| w * pick(n))
+                .sum()
         };
         Noise {
             q_offset: mean(|n| n.q_offset),
@@ -423,23 +454,17 @@ impl Prior {
     pub(super) fn advanced(
         &self,
         states: &[State],
-        weights: &[f64],
+        weights: &Weights,
         days: f64,
         extra: [f64; 2],
-    ) -> (Vec<State>, Vec<f64>) {
+    ) -> (Vec<State>, Weights) {
         let states = self
             .noises
             .iter()
             .zip(states)
             .map(|(noise, state)| state.advanced(&Passage::new(noise, days, extra)))
             .collect();
-        let turned = self.turnover(days);
-        let weights = weights
-            .iter()
-            .zip(&self.shares)
-            .map(|(w, share)| (1.0 - turned) * w + turned * share)
-            .collect();
-        (states, weights)
+        (states, weights.turned(self, days))
     }
 }
 
@@ -508,22 +533,8 @@ fn innovations(observation: &Observation, foretold: &Moments) -> Vec<Innovation>
         .iter()
         .map(|row| Innovation {
             mv: row.y_mv - row.h[0] * foretold.offset_mv - row.h[1] * foretold.slope,
-            sigma_mv: (foretold.variance_along(row.h) + row.var_mv2 + observation.shared_var_mv2).sqrt(),
+            sigma_mv: (foretold.variance_along(row.h) + row.var_mv2 + observation.shared_var_mv2)
+                .sqrt(),
         })
         .collect()
-}
-
-/// Makes the sum 1 and returns what it was; figures that have all vanished become equal.
-fn normalise(weights: &mut [f64]) -> f64 {
-    let sum: f64 = weights.iter().sum();
-    if sum > 0.0 {
-        for w in weights.iter_mut() {
-            *w /= sum;
-        }
-        return sum;
-    }
-    #[expect(clippy::cast_precision_loss, reason = "a few dozen sets")]
-    let share = 1.0 / weights.len() as f64;
-    weights.fill(share);
-    f64::MIN_POSITIVE
 }
