@@ -90,7 +90,7 @@ impl Life {
             let mut rate = drift;
             match way {
                 Ageing::Ordinary => {
-                    drift += -drift * dt / 60.0 + 0.08 * (2.0 * dt / 60.0).sqrt() * draws.normal()
+                    drift += -drift * dt / 60.0 + 0.08 * (2.0 * dt / 60.0).sqrt() * draws.normal();
                 }
                 Ageing::HeavyTailed => {
                     // Student's t with 3 degrees, scaled to unit variance.

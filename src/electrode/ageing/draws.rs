@@ -1,6 +1,6 @@
 //! # Random figures that are the same every time: the seed is an argument
 //!
-//! Source: SplitMix64 (Steele, Lea and Flood, OOPSLA 2014, constants from memory); normal by Box and Muller (1958).
+//! Source: the generator of Steele, Lea and Flood (OOPSLA 2014, constants from memory); normal by Box and Muller (1958).
 
 /// A stream of random figures.
 #[derive(Debug, Clone)]

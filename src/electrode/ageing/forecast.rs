@@ -278,9 +278,9 @@ fn crossing(times: &[f64], f: impl Fn(f64) -> f64, level: f64) -> Option<f64> {
     for _ in 0..20 {
         let middle = 0.5 * (low + high);
         if f(middle) > level {
-            high = middle
+            high = middle;
         } else {
-            low = middle
+            low = middle;
         }
     }
     Some(high)

@@ -111,7 +111,7 @@ fn junction_var(readings: &[StandardReading], kind: ProbeKind) -> f64 {
 
 /// A liquid as another instrument saw it at a moment, with the probe's own signal then.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Seen {
+pub struct Comparison {
     /// The probe's signal then, mV.
     pub mv: f64,
     /// Temperature then, °C.
@@ -175,7 +175,7 @@ impl Observation {
         temp_c: f64,
         (kind, ph_iso): (ProbeKind, f64),
     ) -> Self {
-        let seen = Seen {
+        let seen = Comparison {
             mv,
             temp_c,
             value: fact.fact.value,
@@ -188,7 +188,7 @@ impl Observation {
     /// from one comparison to the next, so `n_comparisons` made between two checks of it together weigh as one.
     pub fn pair(
         at: Timestamp,
-        seen: &Seen,
+        seen: &Comparison,
         n_comparisons: u32,
         (kind, ph_iso): (ProbeKind, f64),
     ) -> Self {
@@ -202,7 +202,7 @@ impl Observation {
     fn seen(
         at: Timestamp,
         (what, event): (Kind, EventId),
-        seen: &Seen,
+        seen: &Comparison,
         (kind, ph_iso): (ProbeKind, f64),
     ) -> Self {
         // E(t) = offset + slope·k(T)(pH_iso − pH): variance from the other's u, the signal's noise and mixing.

@@ -48,7 +48,7 @@ pub enum Outcome {
 
 /// One event as the track saw it.
 #[derive(Debug, Clone, PartialEq)]
-pub struct Seen {
+pub struct Event {
     /// When.
     pub at: Timestamp,
     /// The ledger's number.
@@ -64,7 +64,7 @@ pub struct Seen {
 /// The bank just after one event.
 #[derive(Debug, Clone)]
 struct Step {
-    seen: Seen,
+    event: Event,
     /// Extra diffusion on the way here, per day.
     extra: [f64; 2],
     states: Vec<State>,
@@ -73,6 +73,8 @@ struct Step {
     /// Likelihood of the event under each set, relative to the largest.
     likelihoods: Vec<f64>,
     log_likelihood: f64,
+    /// How far off all standards of the event were together.
+    chi2: f64,
 }
 
 /// What comes after a step, for smoothing.
@@ -80,6 +82,9 @@ struct Step {
 struct Later {
     /// Just before the step's own observations.
     before: Vec<Adjoint>,
+    /// Likelihood of the step and what follows, per set.
+    beta: Weights,
+    /// Weights just after the step.
     weights: Weights,
 }
 
@@ -123,7 +128,7 @@ impl Track {
                 track.steps.push(step);
                 continue;
             }
-            let innovations = step.seen.innovations;
+            let innovations = step.event.innovations;
             let jumped = track.step(index, event, Outcome::TakenAsJump);
             let mut step = if event.observation.confirmed
                 || (event.observation.tells_a_jump() && jumped.fits())
@@ -137,7 +142,7 @@ impl Track {
                 held = Some(index);
                 track.step(index, event, Outcome::HeldOut)
             };
-            step.seen.innovations = innovations;
+            step.event.innovations = innovations;
             track.steps.push(step);
         }
         track.later = track.look_back();
@@ -159,9 +164,9 @@ impl Track {
                 Outcome::Taken
             };
             let mut step = other.step(place, event, outcome);
-            step.seen
+            step.event
                 .innovations
-                .clone_from(&self.steps[place].seen.innovations);
+                .clone_from(&self.steps[place].event.innovations);
             other.steps.push(step);
         }
         let step = other.step(index, &ready[index], Outcome::Taken);
@@ -179,7 +184,7 @@ impl Track {
     fn step(&self, index: usize, event: &Ready<'_>, outcome: Outcome) -> Step {
         let observation = event.observation;
         let previous = self.steps[..index].last();
-        let days = previous.map_or(0.0, |p| observation.at.days_since(p.seen.at));
+        let days = previous.map_or(0.0, |p| observation.at.days_since(p.event.at));
         let mut jump = observation.jump;
         let mut extra = [0.0; 2];
         if outcome == Outcome::TakenAsJump {
@@ -195,6 +200,7 @@ impl Track {
         let foretold = self.foretold(previous, days, extra);
         let mut states: Vec<State> = foretold.0.iter().map(|s| s.broken(jump)).collect();
         let innovations = innovations(observation, &Moments::mixed(&states, &foretold.1.by_set()));
+        let chi2 = chi2(event, State::mixed(&states, &foretold.1.by_set()));
         let mut updates = vec![Vec::new(); states.len()];
         let mut log_likelihoods = vec![0.0; states.len()];
         if outcome != Outcome::HeldOut {
@@ -228,7 +234,7 @@ impl Track {
             total.ln() + largest + event.log_norm
         };
         Step {
-            seen: Seen {
+            event: Event {
                 at: observation.at,
                 event: observation.event,
                 kind: observation.kind,
@@ -241,6 +247,7 @@ impl Track {
             weights,
             likelihoods,
             log_likelihood,
+            chi2,
         }
     }
 
@@ -272,22 +279,21 @@ impl Track {
                     *adjoint = adjoint.before(update);
                 }
             }
+            let weights = step.weights.met(&beta).normalised().0;
+            beta = beta.times(&step.likelihoods).normalised().0;
             later.push(Later {
                 before: adjoints.clone(),
-                weights: step.weights.met(&beta).normalised().0,
+                beta: beta.clone(),
+                weights,
             });
             let Some(previous) = index.checked_sub(1).map(|i| &self.steps[i]) else {
                 break;
             };
-            let days = step.seen.at.days_since(previous.seen.at);
+            let days = step.event.at.days_since(previous.event.at);
             for (adjoint, noise) in adjoints.iter_mut().zip(&self.prior.noises) {
                 *adjoint = adjoint.earlier(&Passage::new(noise, days, step.extra));
             }
-            beta = beta
-                .times(&step.likelihoods)
-                .earlier(&self.prior, days)
-                .normalised()
-                .0;
+            beta = beta.earlier(&self.prior, days);
         }
         later.reverse();
         later
@@ -297,7 +303,7 @@ impl Track {
     fn known_at(&self, t: Timestamp) -> Option<(usize, &Step)> {
         let index = self
             .steps
-            .partition_point(|s| s.seen.at <= t)
+            .partition_point(|s| s.event.at <= t)
             .checked_sub(1)?;
         // What a later event put right was not known while that event was still to come.
         let step = self
@@ -313,23 +319,23 @@ impl Track {
     /// Every set's state at `t` with its weight, as known then; `None` before the first event.
     pub(super) fn filtered_sets(&self, t: Timestamp) -> Option<(Vec<State>, Weights)> {
         let (_, step) = self.known_at(t)?;
-        Some(self.foretold(Some(step), t.days_since(step.seen.at), [0.0; 2]))
+        Some(self.foretold(Some(step), t.days_since(step.event.at), [0.0; 2]))
     }
 
     /// Every set's state at `t` with its weight, as known now; `None` before the first event.
     fn smoothed_sets(&self, t: Timestamp) -> Option<(Vec<State>, Weights)> {
         let index = self
             .steps
-            .partition_point(|s| s.seen.at <= t)
+            .partition_point(|s| s.event.at <= t)
             .checked_sub(1)?;
         let step = &self.steps[index];
-        let days = t.days_since(step.seen.at);
+        let days = t.days_since(step.event.at);
         let Some(next) = self.steps.get(index + 1) else {
             return Some(self.foretold(Some(step), days, [0.0; 2]));
         };
-        let (states, _) = self.foretold(Some(step), days, next.extra);
+        let (states, weights) = self.foretold(Some(step), days, next.extra);
         let later = &self.later[index + 1];
-        let to_go = next.seen.at.days_since(t);
+        let to_go = next.event.at.days_since(t);
         let states = states
             .iter()
             .zip(&later.before)
@@ -338,7 +344,8 @@ impl Track {
                 state.smoothed(&before.earlier(&Passage::new(noise, to_go, next.extra)))
             })
             .collect();
-        Some((states, later.weights.clone()))
+        let beta = later.beta.earlier(&self.prior, to_go);
+        Some((states, weights.met(&beta).normalised().0))
     }
 
     /// Offset, drift, slope and rate at `t`, resting on events at or before it; `None` before the first.
@@ -368,9 +375,9 @@ impl Track {
         t: Timestamp,
         sets: impl Fn(Timestamp) -> Option<(Vec<State>, Weights)>,
     ) -> Option<Segment> {
-        let index = self.steps.partition_point(|s| s.seen.at <= t);
-        let after = self.steps.get(index.checked_sub(1)?)?.seen.at;
-        let next = self.steps.get(index).map(|s| s.seen.at);
+        let index = self.steps.partition_point(|s| s.event.at <= t);
+        let after = self.steps.get(index.checked_sub(1)?)?.event.at;
+        let next = self.steps.get(index).map(|s| s.event.at);
         let (from, until) = Segment::around(t, after, next);
         let moments = |t: Timestamp| {
             sets(t).map(|(states, weights)| Moments::mixed(&states, &weights.by_set()))
@@ -385,8 +392,8 @@ impl Track {
     }
 
     /// Every event in order of time, with how far off it was and what became of it.
-    pub fn events(&self) -> impl Iterator<Item = &Seen> {
-        self.steps.iter().map(|s| &s.seen)
+    pub fn events(&self) -> impl Iterator<Item = &Event> {
+        self.steps.iter().map(|s| &s.event)
     }
 
     /// Events with standards that count.
@@ -398,7 +405,7 @@ impl Track {
 
     /// When the last event at or before `t` was, which may be a service.
     pub fn last_until(&self, t: Timestamp) -> Option<Timestamp> {
-        self.known_at(t).map(|(_, step)| step.seen.at)
+        self.known_at(t).map(|(_, step)| step.event.at)
     }
 
     /// Logarithm of the marginal likelihood of all events that count.
@@ -469,12 +476,30 @@ impl Prior {
 }
 
 impl Step {
+    /// Whether every standard lies within 4σ and all together within the same probability.
     fn fits(&self) -> bool {
-        self.seen
-            .innovations
-            .iter()
-            .all(|i| i.sigmas().abs() <= HELD_OUT_BEYOND)
+        let innovations = &self.event.innovations;
+        #[expect(clippy::cast_precision_loss, reason = "a handful of standards")]
+        let more = innovations.len().saturating_sub(1) as f64;
+        // χ² of n figures beyond which lies what lies beyond 4σ of one (6e-5): 16, 19.3, 22.1, 24.5; straight within 0.5.
+        let limit = HELD_OUT_BEYOND * HELD_OUT_BEYOND + 3.0 * more;
+        self.chi2 <= limit
+            && innovations
+                .iter()
+                .all(|i| i.sigmas().abs() <= HELD_OUT_BEYOND)
     }
+}
+
+/// Sum of the squared innovations over their variances, each foretold from the standards before it too.
+fn chi2(event: &Ready<'_>, foretold: State) -> f64 {
+    let mut believed = foretold;
+    let mut sum = 0.0;
+    for scalar in &event.scalars {
+        let (after, update) = believed.updated(scalar);
+        sum += update.innovation.powi(2) / update.variance;
+        believed = after;
+    }
+    sum
 }
 
 impl Observation {
