@@ -6,8 +6,8 @@ use halfcell::electrode::ageing::{
 use halfcell::electrode::convert::{Inputs, to_ph};
 use halfcell::electrode::fit::{Limits, fit};
 use halfcell::electrode::history::{
-    Calibration, Dated, ElectrodeLine, EventId, ProbeHistory, ProbeKind, ProbeSpec, Stage, Verdict,
-    Verification,
+    Calibration, Dated, ElectrodeLine, EventId, ProbeHistory, ProbeKind, ProbeSpec, Service, Stage,
+    Verdict, Verification,
 };
 use halfcell::electrode::orp::ReferenceElectrode;
 use halfcell::electrode::units::{Celsius, Millivolts, Timestamp};
@@ -47,7 +47,11 @@ fn keep(way: Ageing, seed: u64, checks: f64) -> Kept {
     let mut draws = Draws::new(seed ^ 0xA5A5);
     let mut visits = vec![0.5];
     while visits[visits.len() - 1] < f64::from(330 - 20) {
-        visits.push(visits[visits.len() - 1] + 30.0 + 4.0 * (draws.uniform() - 0.5) * 2.0);
+        visits.push(
+            visits[visits.len() - 1]
+                + (30.0 + 4.0 * (draws.uniform() - 0.5) * 2.0)
+                    * std::env::var("INTERVAL").map_or(1.0, |w| w.parse::<f64>().unwrap()),
+        );
     }
     visits.retain(|v| *v < f64::from(330));
     let life = Life::new(way, seed, N_DAYS + 400, &visits);
@@ -67,6 +71,15 @@ fn keep(way: Ageing, seed: u64, checks: f64) -> Kept {
         services: Vec::new(),
         confirmed: Vec::new(),
     };
+    if way == Ageing::SawTooth {
+        for (n, visit) in visits.iter().enumerate() {
+            history.services.push(dated(
+                10_000 + i64::try_from(n).unwrap(),
+                visit - 0.01,
+                Service::Cleaned,
+            ));
+        }
+    }
     let mut before: Option<ElectrodeLine> = None;
     for (n, visit) in visits.iter().enumerate() {
         let id = 2 * i64::try_from(n).unwrap() + 1;
@@ -308,9 +321,18 @@ fn the_study() {
         );
         for way in Ageing::ALL {
             let mut score = Score::default();
-            for n in 0..n_lives {
-                let kept = keep(way, 1000 + n, checks);
-                judge(&kept, &prior, tolerance, &mut score);
+            let lives: Vec<Kept> = (0..n_lives).map(|n| keep(way, 1000 + n, checks)).collect();
+            let mut prior = prior.clone();
+            if std::env::var("LEARN").is_ok() {
+                let all: Vec<Vec<Observation>> = lives
+                    .iter()
+                    .take(8)
+                    .map(|k| observe(&k.history, &[], at(330.0)))
+                    .collect();
+                prior = halfcell::electrode::ageing::learn(&all, &prior);
+            }
+            for kept in &lives {
+                judge(kept, &prior, tolerance, &mut score);
             }
             println!("{}", score.row(&format!("{way:?}")));
         }

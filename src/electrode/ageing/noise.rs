@@ -89,15 +89,16 @@ const SLOPE_SETS: [(f64, f64, f64); 3] = [
 /// Shares of the three slope sets before anything is known.
 const SLOPE_SHARES: [f64; 3] = [0.4, 0.45, 0.15];
 /// Factors on the ordinary walk of the offset, and their shares.
-const WANDERS: [(f64, f64); 5] = [
-    (0.3, 0.07),
-    (0.55, 0.20),
-    (1.0, 0.42),
-    (1.8, 0.23),
-    (3.3, 0.08),
+const WANDERS: [(f64, f64); 6] = [
+    (0.3, 0.09),
+    (0.55, 0.21),
+    (1.0, 0.40),
+    (1.8, 0.21),
+    (3.3, 0.07),
+    (6.0, 0.02),
 ];
 /// Standard deviations of the offset's drift, mV/day, and their shares: steady, ordinary, runaway (a reference that fouls or is poisoned).
-const DRIFTS: [(f64, f64); 3] = [(0.02, 0.38), (0.10, 0.46), (0.50, 0.16)];
+const DRIFTS: [(f64, f64); 3] = [(0.02, 0.40), (0.10, 0.48), (0.50, 0.12)];
 
 /// A bank: sets of noise with the share each has before this electrode is known. [`learn`](super::learn::learn) moves the shares
 /// towards what a site's electrodes of the kind have shown.
@@ -193,7 +194,7 @@ impl Prior {
 /// Jump variance a service brings: offset mV², slope squared. Common practice, no source.
 pub(super) fn service_break(service: Service) -> [f64; 2] {
     let (offset_mv, slope) = match service {
-        Service::Cleaned => (2.0, 0.01),
+        Service::Cleaned => (5.0, 0.01),
         Service::Regelled => (10.0, 0.005),
         Service::NewCap => (15.0, 0.03),
         Service::NewCable => (1.0, 0.002),
