@@ -3,6 +3,7 @@
 //! in: a track, the line in force, what the point can live with and its usual pH and temperature. out: calibrate-by with its earliest and
 //! latest, and why. The same future is drawn every time: a fixed set of paths of the electrode under its bank of noise.
 
+use super::bank::advanced;
 use super::draws::Draws;
 use super::filter::{OFFSET, Passage, SLOPE, State};
 use super::noise::Prior;
@@ -93,7 +94,7 @@ pub fn calibrate_by(
         }
     };
     let u = |t: f64| {
-        let (states, weights) = track.prior().advanced(&states, &weights, t, [0.0; 2]);
+        let (states, weights) = advanced(track.prior(), (&states, &weights), t, [0.0; 2]);
         Error::new(line, demands).u(&Moments::mixed(&states, &weights.by_set()))
     };
     sooner(crossing(&times, u, demands.tolerance), Reason::Uncertainty);

@@ -5,6 +5,7 @@
 //! Always: 1. time comes in, nothing reads a clock; the same input gives the same bits. 2. covariances are symmetric and positive.
 //! Not here: which calibration is in force (`history`), mV to pH (`convert`), what becomes of evidence (`watch`).
 
+mod bank;
 mod draws;
 mod filter;
 mod forecast;

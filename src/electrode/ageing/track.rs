@@ -8,8 +8,9 @@
 //! Always: 1. an event further off than 4σ is held out, unless confirmed, unless several standards agree that the electrode moved, or
 //! until the next event bears it out. 2. a filtered figure rests on events at or before its moment alone. 3. same input, same bits.
 
-use super::filter::{Adjoint, Passage, Scalar, State, Update};
-use super::noise::{Noise, Prior, UNDECLARED_BREAK};
+use super::bank::{Later, Ready, Step, look_back};
+use super::filter::State;
+use super::noise::{Noise, Prior};
 use super::observation::{Kind, Observation, in_order};
 use super::segment::{Moments, Segment};
 use super::weights::Weights;
@@ -61,33 +62,6 @@ pub struct Event {
     pub outcome: Outcome,
 }
 
-/// The bank just after one event.
-#[derive(Debug, Clone)]
-struct Step {
-    event: Event,
-    /// Extra diffusion on the way here, per day.
-    extra: [f64; 2],
-    states: Vec<State>,
-    updates: Vec<Vec<Update>>,
-    weights: Weights,
-    /// Likelihood of the event under each set, relative to the largest.
-    likelihoods: Vec<f64>,
-    log_likelihood: f64,
-    /// How far off all standards of the event were together.
-    chi2: f64,
-}
-
-/// What comes after a step, for smoothing.
-#[derive(Debug, Clone)]
-struct Later {
-    /// Just before the step's own observations.
-    before: Vec<Adjoint>,
-    /// Likelihood of the step and what follows, per set.
-    beta: Weights,
-    /// Weights just after the step.
-    weights: Weights,
-}
-
 /// An electrode through time.
 #[derive(Debug, Clone)]
 pub struct Track {
@@ -96,13 +70,6 @@ pub struct Track {
     /// Steps as they were known until a later event bore out one held out.
     as_known: Vec<(usize, Step)>,
     later: Vec<Later>,
-}
-
-/// An observation made ready: rows whitened, so that each is a scalar of unit variance.
-struct Ready<'a> {
-    observation: &'a Observation,
-    scalars: Vec<Scalar>,
-    log_norm: f64,
 }
 
 impl Track {
@@ -120,7 +87,7 @@ impl Track {
         };
         let mut held: Option<usize> = None;
         for (index, event) in ready.iter().enumerate() {
-            let step = track.step(index, event, Outcome::Taken);
+            let step = track.step(event, Outcome::Taken);
             if event.observation.rows.is_empty() || step.fits() {
                 if !event.observation.rows.is_empty() {
                     held = None;
@@ -129,7 +96,7 @@ impl Track {
                 continue;
             }
             let innovations = step.event.innovations;
-            let jumped = track.step(index, event, Outcome::TakenAsJump);
+            let jumped = track.step(event, Outcome::TakenAsJump);
             let mut step = if event.observation.confirmed
                 || (event.observation.tells_a_jump() && jumped.fits())
             {
@@ -140,12 +107,12 @@ impl Track {
                 step
             } else {
                 held = Some(index);
-                track.step(index, event, Outcome::HeldOut)
+                track.step(event, Outcome::HeldOut)
             };
             step.event.innovations = innovations;
             track.steps.push(step);
         }
-        track.later = track.look_back();
+        track.later = look_back(prior, &track.steps);
         Some(track)
     }
 
@@ -163,13 +130,13 @@ impl Track {
             } else {
                 Outcome::Taken
             };
-            let mut step = other.step(place, event, outcome);
+            let mut step = other.step(event, outcome);
             step.event
                 .innovations
                 .clone_from(&self.steps[place].event.innovations);
             other.steps.push(step);
         }
-        let step = other.step(index, &ready[index], Outcome::Taken);
+        let step = other.step(&ready[index], Outcome::Taken);
         if !step.fits() {
             return None;
         }
@@ -180,123 +147,9 @@ impl Track {
         Some(step)
     }
 
-    /// The bank just after event `index`, which follows the steps there are.
-    fn step(&self, index: usize, event: &Ready<'_>, outcome: Outcome) -> Step {
-        let observation = event.observation;
-        let previous = self.steps[..index].last();
-        let days = previous.map_or(0.0, |p| observation.at.days_since(p.event.at));
-        let mut jump = observation.jump;
-        let mut extra = [0.0; 2];
-        if outcome == Outcome::TakenAsJump {
-            // When it jumped is not known: its variance is spread over the time since the event before.
-            for ((jump, extra), variance) in jump.iter_mut().zip(&mut extra).zip(UNDECLARED_BREAK) {
-                if days > 0.0 {
-                    *extra = variance / days;
-                } else {
-                    *jump += variance;
-                }
-            }
-        }
-        let foretold = self.foretold(previous, days, extra);
-        let mut states: Vec<State> = foretold.0.iter().map(|s| s.broken(jump)).collect();
-        let innovations = innovations(observation, &Moments::mixed(&states, &foretold.1.by_set()));
-        let chi2 = chi2(event, State::mixed(&states, &foretold.1.by_set()));
-        let mut updates = vec![Vec::new(); states.len()];
-        let mut log_likelihoods = vec![0.0; states.len()];
-        if outcome != Outcome::HeldOut {
-            for ((state, updates), log) in states
-                .iter_mut()
-                .zip(&mut updates)
-                .zip(&mut log_likelihoods)
-            {
-                for scalar in &event.scalars {
-                    let (after, update) = state.updated(scalar);
-                    // ln N(ν; 0, S)
-                    *log -=
-                        0.5 * (update.variance.ln() + update.innovation.powi(2) / update.variance);
-                    *state = after;
-                    updates.push(update);
-                }
-            }
-        }
-        let largest = log_likelihoods
-            .iter()
-            .copied()
-            .fold(f64::NEG_INFINITY, f64::max);
-        let likelihoods: Vec<f64> = log_likelihoods
-            .iter()
-            .map(|l| (l - largest).exp())
-            .collect();
-        let (weights, total) = foretold.1.times(&likelihoods).normalised();
-        let log_likelihood = if outcome == Outcome::HeldOut {
-            0.0
-        } else {
-            total.ln() + largest + event.log_norm
-        };
-        Step {
-            event: Event {
-                at: observation.at,
-                event: observation.event,
-                kind: observation.kind,
-                innovations,
-                outcome,
-            },
-            extra,
-            states,
-            updates,
-            weights,
-            likelihoods,
-            log_likelihood,
-            chi2,
-        }
-    }
-
-    /// States and weights `days` after a step, or at the very start.
-    fn foretold(
-        &self,
-        previous: Option<&Step>,
-        days: f64,
-        extra: [f64; 2],
-    ) -> (Vec<State>, Weights) {
-        let Some(previous) = previous else {
-            let noises = self.prior.noises.iter();
-            let states = noises.map(|n| State::start(&self.prior, n)).collect();
-            return (states, Weights::start(&self.prior));
-        };
-        self.prior
-            .advanced(&previous.states, &previous.weights, days, extra)
-    }
-
-    /// The backward pass: adjoints of every set's filter, and smoothed weights.
-    fn look_back(&self) -> Vec<Later> {
-        let n_sets = self.prior.noises.len();
-        let mut adjoints = vec![Adjoint::NOTHING; n_sets];
-        let mut beta = Weights::nothing(&self.prior);
-        let mut later = Vec::with_capacity(self.steps.len());
-        for (index, step) in self.steps.iter().enumerate().rev() {
-            for (adjoint, updates) in adjoints.iter_mut().zip(&step.updates) {
-                for update in updates.iter().rev() {
-                    *adjoint = adjoint.before(update);
-                }
-            }
-            let weights = step.weights.met(&beta).normalised().0;
-            beta = beta.times(&step.likelihoods).normalised().0;
-            later.push(Later {
-                before: adjoints.clone(),
-                beta: beta.clone(),
-                weights,
-            });
-            let Some(previous) = index.checked_sub(1).map(|i| &self.steps[i]) else {
-                break;
-            };
-            let days = step.event.at.days_since(previous.event.at);
-            for (adjoint, noise) in adjoints.iter_mut().zip(&self.prior.noises) {
-                *adjoint = adjoint.earlier(&Passage::new(noise, days, step.extra));
-            }
-            beta = beta.earlier(&self.prior, days);
-        }
-        later.reverse();
-        later
+    /// The bank after an event that follows the steps there are.
+    fn step(&self, event: &Ready<'_>, outcome: Outcome) -> Step {
+        Step::new(&self.prior, self.steps.last(), event, outcome)
     }
 
     /// The last step at or before `t`, as known then.
@@ -319,7 +172,7 @@ impl Track {
     /// Every set's state at `t` with its weight, as known then; `None` before the first event.
     pub(super) fn filtered_sets(&self, t: Timestamp) -> Option<(Vec<State>, Weights)> {
         let (_, step) = self.known_at(t)?;
-        Some(self.foretold(Some(step), t.days_since(step.event.at), [0.0; 2]))
+        Some(step.later(&self.prior, t.days_since(step.event.at)))
     }
 
     /// Every set's state at `t` with its weight, as known now; `None` before the first event.
@@ -330,22 +183,12 @@ impl Track {
             .checked_sub(1)?;
         let step = &self.steps[index];
         let days = t.days_since(step.event.at);
-        let Some(next) = self.steps.get(index + 1) else {
-            return Some(self.foretold(Some(step), days, [0.0; 2]));
+        let (Some(next), Some(later)) = (self.steps.get(index + 1), self.later.get(index + 1))
+        else {
+            return Some(step.later(&self.prior, days));
         };
-        let (states, weights) = self.foretold(Some(step), days, next.extra);
-        let later = &self.later[index + 1];
         let to_go = next.event.at.days_since(t);
-        let states = states
-            .iter()
-            .zip(&later.before)
-            .zip(&self.prior.noises)
-            .map(|((state, before), noise)| {
-                state.smoothed(&before.earlier(&Passage::new(noise, to_go, next.extra)))
-            })
-            .collect();
-        let beta = later.beta.earlier(&self.prior, to_go);
-        Some((states, weights.met(&beta).normalised().0))
+        Some(step.smoothed(&self.prior, (next, later), days, to_go))
     }
 
     /// Offset, drift, slope and rate at `t`, resting on events at or before it; `None` before the first.
@@ -456,52 +299,6 @@ impl Track {
     }
 }
 
-impl Prior {
-    /// Every set's state and weight after `days` without an event.
-    pub(super) fn advanced(
-        &self,
-        states: &[State],
-        weights: &Weights,
-        days: f64,
-        extra: [f64; 2],
-    ) -> (Vec<State>, Weights) {
-        let states = self
-            .noises
-            .iter()
-            .zip(states)
-            .map(|(noise, state)| state.advanced(&Passage::new(noise, days, extra)))
-            .collect();
-        (states, weights.turned(self, days))
-    }
-}
-
-impl Step {
-    /// Whether every standard lies within 4σ and all together within the same probability.
-    fn fits(&self) -> bool {
-        let innovations = &self.event.innovations;
-        #[expect(clippy::cast_precision_loss, reason = "a handful of standards")]
-        let more = innovations.len().saturating_sub(1) as f64;
-        // χ² of n figures beyond which lies what lies beyond 4σ of one (6e-5): 16, 19.3, 22.1, 24.5; straight within 0.5.
-        let limit = HELD_OUT_BEYOND * HELD_OUT_BEYOND + 3.0 * more;
-        self.chi2 <= limit
-            && innovations
-                .iter()
-                .all(|i| i.sigmas().abs() <= HELD_OUT_BEYOND)
-    }
-}
-
-/// Sum of the squared innovations over their variances, each foretold from the standards before it too.
-fn chi2(event: &Ready<'_>, foretold: State) -> f64 {
-    let mut believed = foretold;
-    let mut sum = 0.0;
-    for scalar in &event.scalars {
-        let (after, update) = believed.updated(scalar);
-        sum += update.innovation.powi(2) / update.variance;
-        believed = after;
-    }
-    sum
-}
-
 impl Observation {
     /// Whether it could tell a moved electrode from one wrong bottle: two standards that differ.
     fn tells_a_jump(&self) -> bool {
@@ -509,57 +306,4 @@ impl Observation {
             .iter()
             .any(|r| (r.h[1] - self.rows[0].h[1]).abs() > 30.0)
     }
-}
-
-impl<'a> Ready<'a> {
-    /// Whitens the rows: covariance D + c·11ᵀ = L Lᵀ, rows become L⁻¹h, L⁻¹y of unit variance.
-    fn new(observation: &'a Observation) -> Self {
-        let rows = &observation.rows;
-        let n = rows.len();
-        let mut lower = vec![vec![0.0; n]; n];
-        let mut scalars: Vec<Scalar> = Vec::with_capacity(n);
-        let mut log_norm = 0.0;
-        for i in 0..n {
-            for j in 0..=i {
-                let own = if i == j { rows[i].var_mv2 } else { 0.0 };
-                let done: f64 = (0..j).map(|k| lower[i][k] * lower[j][k]).sum();
-                let rest: f64 = own + observation.shared_var_mv2 - done;
-                lower[i][j] = if i == j {
-                    rest.max(f64::MIN_POSITIVE).sqrt()
-                } else {
-                    rest / lower[j][j]
-                };
-            }
-            let solve = |whole: f64, part: fn(&Scalar) -> f64| {
-                let done: f64 = (0..i).map(|k| lower[i][k] * part(&scalars[k])).sum();
-                (whole - done) / lower[i][i]
-            };
-            let scalar = Scalar {
-                h: [
-                    solve(rows[i].h[0], |s| s.h[0]),
-                    solve(rows[i].h[1], |s| s.h[1]),
-                ],
-                y: solve(rows[i].y_mv, |s| s.y),
-            };
-            scalars.push(scalar);
-            log_norm -= lower[i][i].ln() + 0.5 * (2.0 * std::f64::consts::PI).ln();
-        }
-        Self {
-            observation,
-            scalars,
-            log_norm,
-        }
-    }
-}
-
-fn innovations(observation: &Observation, foretold: &Moments) -> Vec<Innovation> {
-    observation
-        .rows
-        .iter()
-        .map(|row| Innovation {
-            mv: row.y_mv - row.h[0] * foretold.offset_mv - row.h[1] * foretold.slope,
-            sigma_mv: (foretold.variance_along(row.h) + row.var_mv2 + observation.shared_var_mv2)
-                .sqrt(),
-        })
-        .collect()
 }
