@@ -1,7 +1,7 @@
 //! What the tests of the ageing model share.
 
 use halfcell::electrode::ageing::{Kind, Observation, Row};
-use halfcell::electrode::history::{ElectrodeLine, EventId};
+use halfcell::electrode::history::{Dated, ElectrodeLine, EventId};
 use halfcell::electrode::units::Timestamp;
 
 pub(crate) const K25: f64 = 59.159_349;
@@ -53,5 +53,16 @@ pub(crate) fn check(
         shared_var_mv2: 0.36,
         jump: [0.0; 2],
         confirmed: false,
+    }
+}
+
+/// A fact entered when it was so.
+pub(crate) fn dated<T>(id: EventId, days: f64, fact: T) -> Dated<T> {
+    Dated {
+        id,
+        at: after_days(days),
+        entered: after_days(days),
+        by: "M. Oake".into(),
+        fact,
     }
 }

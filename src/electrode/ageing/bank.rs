@@ -3,7 +3,7 @@
 //! Always: 1. without an event, states and weights a while later do not depend on how often they were looked at between.
 
 use super::filter::{Adjoint, Passage, Scalar, State, Update};
-use super::noise::{Noise, Prior, UNDECLARED_BREAK};
+use super::noise::{Prior, UNDECLARED_BREAK};
 use super::observation::Observation;
 use super::segment::Moments;
 use super::track::{Event, HELD_OUT_BEYOND, Innovation, Outcome};

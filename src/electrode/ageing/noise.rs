@@ -98,7 +98,7 @@ const WANDERS: [(f64, f64); 6] = [
     (6.0, 0.02),
 ];
 /// Standard deviations of the offset's drift, mV/day, and their shares: steady, ordinary, runaway (a reference that fouls or is poisoned).
-const DRIFTS: [(f64, f64); 3] = [(0.02, 0.40), (0.10, 0.48), (0.50, 0.12)];
+const DRIFTS: [(f64, f64); 3] = [(0.02, 0.40), (0.10, 0.47), (0.50, 0.13)];
 
 /// A bank: sets of noise with the share each has before this electrode is known. [`learn`](super::learn::learn) moves the shares
 /// towards what a site's electrodes of the kind have shown.

@@ -118,32 +118,28 @@ impl Track {
 
     /// Whether the event at `index` fits once the one held out counts as a jump; if so that one's step is taken back in.
     fn bears_out(&mut self, held: usize, index: usize, ready: &[Ready<'_>]) -> Option<Step> {
-        let mut other = Self {
-            prior: self.prior.clone(),
-            steps: self.steps[..held].to_vec(),
-            as_known: Vec::new(),
-            later: Vec::new(),
-        };
+        let before = held.checked_sub(1).map(|place| &self.steps[place]);
+        let mut redone: Vec<Step> = Vec::with_capacity(index - held);
         for (place, event) in ready.iter().enumerate().take(index).skip(held) {
             let outcome = if place == held {
                 Outcome::TakenAsJump
             } else {
                 Outcome::Taken
             };
-            let mut step = other.step(event, outcome);
+            let mut step = Step::new(&self.prior, redone.last().or(before), event, outcome);
             step.event
                 .innovations
                 .clone_from(&self.steps[place].event.innovations);
-            other.steps.push(step);
+            redone.push(step);
         }
-        let step = other.step(&ready[index], Outcome::Taken);
+        let step = Step::new(&self.prior, redone.last(), &ready[index], Outcome::Taken);
         if !step.fits() {
             return None;
         }
         let replaced = self.steps.drain(held..).enumerate();
         self.as_known
             .extend(replaced.map(|(n, step)| (held + n, step)));
-        self.steps.extend(other.steps.drain(held..));
+        self.steps.extend(redone);
         Some(step)
     }
 
