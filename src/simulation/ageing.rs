@@ -17,7 +17,7 @@ pub enum Ageing {
     HeavyTailed,
     /// A straight trend of the offset, little walk.
     Trending,
-    /// Fouls between calibrations; each calibration's cleaning takes most of it away, which nobody notes.
+    /// Fouls between cleanings, each of which takes most of it away.
     SawTooth,
     /// Ordinary for some months, then the reference fouls: the offset runs away, faster and faster.
     FoulingReference,

@@ -210,6 +210,9 @@ pub(super) fn look_back(prior: &Prior, steps: &[Step]) -> Vec<Later> {
     all
 }
 
+/// Variance a row keeps at least, mV², so that readings said to be exact can still be divided by.
+const LEAST_VAR_MV2: f64 = 1e-18;
+
 impl<'a> Ready<'a> {
     /// Whitens the rows: covariance D + c·11ᵀ = L Lᵀ, rows become L⁻¹h, L⁻¹y of unit variance.
     pub(super) fn new(observation: &'a Observation) -> Self {
@@ -224,7 +227,7 @@ impl<'a> Ready<'a> {
                 let done: f64 = (0..j).map(|k| lower[i][k] * lower[j][k]).sum();
                 let rest: f64 = own + observation.shared_var_mv2 - done;
                 lower[i][j] = if i == j {
-                    rest.max(f64::MIN_POSITIVE).sqrt()
+                    rest.max(LEAST_VAR_MV2).sqrt()
                 } else {
                     rest / lower[j][j]
                 };

@@ -1,6 +1,8 @@
 //! # The filter: what is known of offset, drift, slope and slope's rate at a moment, under one set of noise
 //!
 //! in: a state, days to pass, standards read. out: the state after. Joseph form, so covariances stay symmetric and positive.
+//! DEVIATES: the slope's own rate stands in the state beside the three figures of the usual description, as the drift stands beside the
+//! offset; otherwise glass that begins to wear is followed only after it has been read several times.
 //! Always: 1. covariances are symmetric to the bit. 2. more noise never makes a variance smaller.
 //! Source of the equations: Kalman (1960); Joseph's stabilised update and the fixed-interval smoother in Bryson and Frazier's form
 //! (both in Gelb (ed.), Applied Optimal Estimation, 1974; from memory), which equals Rauch, Tung and Striebel's and needs no inverse.

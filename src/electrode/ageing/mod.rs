@@ -3,6 +3,8 @@
 //! in: a probe's calibrations, verifications, services, grab samples and second probes. out: offset and slope with covariance at any
 //! moment, forward (u of every value), backward (best), ahead (calibrate-by).
 //! Always: 1. time comes in, nothing reads a clock; the same input gives the same bits. 2. covariances are symmetric and positive.
+//! What it cannot see: a cleaning nobody recorded just before each calibration hides what went before; verify as-found, or record the
+//! service, and it counts.
 //! Not here: which calibration is in force (`history`), mV to pH (`convert`), what becomes of evidence (`watch`).
 
 mod bank;

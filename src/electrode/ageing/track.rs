@@ -269,13 +269,14 @@ impl Track {
         shares.iter().map(|s| s / total).collect()
     }
 
-    /// The noise it now believes in: intensities averaged over the bank by their weights after the last event.
+    /// The noise it now believes in: over the bank by the weights after the last event, intensities averaged by their square roots so that
+    /// an unlikely wild set does not speak for all.
     pub fn noise(&self) -> Noise {
         let weights = self
             .steps
             .last()
             .map_or_else(|| self.prior.shares.clone(), |s| s.weights.by_set());
-        let mean = |pick: fn(&Noise) -> f64| {
+        let mean = |pick: fn(&Noise) -> f64| -> f64 {
             self.prior
                 .noises
                 .iter()
@@ -284,12 +285,12 @@ impl Track {
                 .sum()
         };
         Noise {
-            q_offset: mean(|n| n.q_offset),
-            q_drift: mean(|n| n.q_drift),
+            q_offset: mean(|n| n.q_offset.sqrt()).powi(2),
+            q_drift: mean(|n| n.q_drift.sqrt()).powi(2),
             tau_days: mean(|n| n.tau_days),
-            q_slope: mean(|n| n.q_slope),
+            q_slope: mean(|n| n.q_slope.sqrt()).powi(2),
             slope_rate: mean(|n| n.slope_rate),
-            q_slope_rate: mean(|n| n.q_slope_rate),
+            q_slope_rate: mean(|n| n.q_slope_rate.sqrt()).powi(2),
             slope_tau_days: mean(|n| n.slope_tau_days),
         }
     }
