@@ -132,3 +132,19 @@ fn a_wrong_bottle_is_not_borne_out_by_a_right_one() {
     ]));
     assert_eq!(outcomes(&track)[4..], [Outcome::HeldOut, Outcome::Taken]);
 }
+
+#[test]
+fn a_poisoned_reference_is_believed_and_two_bottles_one_step_too_high_are_not() {
+    // Tens of millivolts in both buffers alike.
+    let poisoned = run(&with(&[check(9, 120.0, &[4.0, 7.0], (-70.0, 0.98), 0.5)]));
+    assert_eq!(outcomes(&poisoned)[4], Outcome::TakenAsJump);
+    // pH 7 and 10 read where 4 and 7 were entered: 174 mV in both alike.
+    let shifted = run(&with(&[check(
+        9,
+        120.0,
+        &[4.0, 7.0],
+        (2.5 - 0.98 * 177.5, 0.98),
+        0.5,
+    )]));
+    assert_eq!(outcomes(&shifted)[4], Outcome::HeldOut);
+}

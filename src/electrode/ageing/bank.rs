@@ -51,6 +51,10 @@ struct Trial {
     chi2: f64,
 }
 
+/// Sizes of jumps tried, in [`UNDECLARED_BREAK`].
+const JUMP_SIZES: [f64; 2] = [0.5, 1.0];
+const LARGEST_JUMP: f64 = 2.0;
+
 impl Step {
     /// The bank just after an event that follows `previous` (`None`: the very first).
     pub(super) fn new(
@@ -59,18 +63,35 @@ impl Step {
         event: &Ready<'_>,
         outcome: Outcome,
     ) -> Self {
+        Self::after(prior, previous, event, (outcome, [0.0; 2]))
+    }
+
+    /// The same when the electrode jumped on the way: the smallest jump that makes the event fit, or the largest if none does.
+    pub(super) fn jumped(prior: &Prior, previous: Option<&Self>, event: &Ready<'_>) -> Self {
+        let step = |size: f64| {
+            let moved = UNDECLARED_BREAK.map(|sd| (size * sd).powi(2));
+            Self::after(prior, previous, event, (Outcome::TakenAsJump, moved))
+        };
+        let fitting = JUMP_SIZES.iter().map(|size| step(*size)).find(Self::fits);
+        fitting.unwrap_or_else(|| step(LARGEST_JUMP))
+    }
+
+    fn after(
+        prior: &Prior,
+        previous: Option<&Self>,
+        event: &Ready<'_>,
+        (outcome, moved): (Outcome, [f64; 2]),
+    ) -> Self {
         let observation = event.observation;
         let days = previous.map_or(0.0, |p| observation.at.days_since(p.event.at));
         let mut jump = observation.jump;
         let mut extra = [0.0; 2];
-        if outcome == Outcome::TakenAsJump {
-            // When it jumped is not known: its variance is spread over the time since the event before.
-            for ((jump, extra), variance) in jump.iter_mut().zip(&mut extra).zip(UNDECLARED_BREAK) {
-                if days > 0.0 {
-                    *extra = variance / days;
-                } else {
-                    *jump += variance;
-                }
+        // When it jumped is not known: the variance is spread over the time since the event before.
+        for ((jump, extra), variance) in jump.iter_mut().zip(&mut extra).zip(moved) {
+            if days > 0.0 {
+                *extra = variance / days;
+            } else {
+                *jump += variance;
             }
         }
         let n_sets = prior.noises.len();

@@ -202,5 +202,5 @@ pub(super) fn service_break(service: Service) -> [f64; 2] {
     [offset_mv * offset_mv, slope * slope]
 }
 
-/// Jump variance granted to an electrode that moved though nobody said why: offset mV², slope squared.
-pub(super) const UNDECLARED_BREAK: [f64; 2] = [15.0 * 15.0, 0.03 * 0.03];
+/// Standard deviation of a jump granted to an electrode that moved though nobody said why: offset mV, slope. Common practice, no source.
+pub(super) const UNDECLARED_BREAK: [f64; 2] = [15.0, 0.03];

@@ -96,7 +96,7 @@ impl Track {
                 continue;
             }
             let innovations = step.event.innovations;
-            let jumped = track.step(event, Outcome::TakenAsJump);
+            let jumped = Step::jumped(prior, track.steps.last(), event);
             let mut step = if event.observation.confirmed
                 || (event.observation.tells_a_jump() && jumped.fits())
             {
@@ -121,12 +121,12 @@ impl Track {
         let before = held.checked_sub(1).map(|place| &self.steps[place]);
         let mut redone: Vec<Step> = Vec::with_capacity(index - held);
         for (place, event) in ready.iter().enumerate().take(index).skip(held) {
-            let outcome = if place == held {
-                Outcome::TakenAsJump
+            let previous = redone.last().or(before);
+            let mut step = if place == held {
+                Step::jumped(&self.prior, previous, event)
             } else {
-                Outcome::Taken
+                Step::new(&self.prior, previous, event, Outcome::Taken)
             };
-            let mut step = Step::new(&self.prior, redone.last().or(before), event, outcome);
             step.event
                 .innovations
                 .clone_from(&self.steps[place].event.innovations);
