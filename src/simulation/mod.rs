@@ -12,3 +12,5 @@ pub mod meter;
 pub mod random;
 pub mod site;
 pub mod talk;
+//! # Simulated electrodes and meters behind pseudo-terminals, for the demo and the tests
+pub mod ageing;
