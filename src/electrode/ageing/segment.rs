@@ -3,7 +3,7 @@
 //! A track's figures move smoothly between events, so over a day a straight line in time carries each of the five: per reading
 //! that is five multiplications and additions.
 
-use super::filter::{OFFSET, SLOPE, State};
+use super::filter::{DRIFT, OFFSET, SLOPE, State};
 use crate::electrode::convert::Converted;
 use crate::electrode::history::ElectrodeLine;
 use crate::electrode::units::Timestamp;
@@ -146,5 +146,10 @@ impl State {
             var_slope: self.cov[SLOPE][SLOPE],
             cov_mv: self.cov[OFFSET][SLOPE],
         }
+    }
+
+    /// How fast the offset moves, mV/day.
+    pub fn drift_mv_per_day(&self) -> f64 {
+        self.mean[DRIFT]
     }
 }
