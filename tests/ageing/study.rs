@@ -281,11 +281,6 @@ const N_LEARNT_FROM: u64 = 6;
 /// Every way of ageing, one score each.
 fn study(checks: f64, learnt: Learnt) -> Vec<(Ageing, Score)> {
     let practice = Prior::of(ProbeKind::Ph);
-    println!(
-        "\nchecks between in {:.0} % of the months, {learnt:?}\n{}",
-        100.0 * checks,
-        Score::heading()
-    );
     let one = |way| {
         let prior = match learnt {
             Learnt::FromPractice => practice.clone(),
@@ -301,10 +296,20 @@ fn study(checks: f64, learnt: Learnt) -> Vec<(Ageing, Score)> {
         for n in 0..N_PROBES {
             judge(&keep(way, 1_000 + n, checks), &prior, &mut score);
         }
-        println!("{}", score.row(&format!("{way:?}")));
         (way, score)
     };
-    Ageing::ALL.into_iter().map(one).collect()
+    let mut scores: Vec<_> = Ageing::ALL.into_iter().map(one).collect();
+    let rows = scores
+        .iter_mut()
+        .map(|(way, score)| score.row(&format!("{way:?}")));
+    let table: Vec<String> = rows.collect();
+    println!(
+        "\nchecks between in {:.0} % of the months, {learnt:?}\n{}\n{}",
+        100.0 * checks,
+        Score::heading(),
+        table.join("\n")
+    );
+    scores
 }
 
 #[derive(Debug, Clone, Copy)]

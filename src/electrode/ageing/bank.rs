@@ -138,6 +138,12 @@ impl Step {
         }
     }
 
+    /// Drops what only the backward pass needs: about 20 kB an event stay.
+    pub(super) fn settle(&mut self) {
+        self.updates = Vec::new();
+        self.likelihoods = Vec::new();
+    }
+
     /// Whether every standard lies within 4σ and all together within the same probability.
     pub(super) fn fits(&self) -> bool {
         let innovations = &self.event.innovations;

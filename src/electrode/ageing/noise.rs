@@ -74,8 +74,8 @@ impl Noise {
 
 /// Days of a mean month.
 const MONTH: f64 = 30.0;
-/// Walk of an ordinary glass electrode's offset, mV per √week (common practice: 1–2 mV a week).
-const WALK_MV_PER_ROOT_WEEK: f64 = 1.2;
+/// Walk of an ordinary glass electrode's offset, mV per √week; with the ordinary drift 1.2 mV a week (common practice: 1–2 mV a week).
+const WALK_MV_PER_ROOT_WEEK: f64 = 1.0;
 /// Time constant of the offset's drift, days: a trend lasts months (common practice).
 const TAU_DAYS: f64 = 90.0;
 /// Time constant of the slope's rate, days.

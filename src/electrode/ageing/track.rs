@@ -113,6 +113,7 @@ impl Track {
             track.steps.push(step);
         }
         track.later = look_back(prior, &track.steps);
+        track.steps.iter_mut().for_each(Step::settle);
         Some(track)
     }
 
