@@ -124,6 +124,9 @@ impl Newest {
     }
 }
 
+/// Columns of a terminal below which the table leaves something out.
+const NARROW: u16 = 110;
+
 /// The status table as text.
 pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<String, LedgerError> {
     let book = reader.book(None)?;
@@ -134,21 +137,30 @@ pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<Stri
         site.name,
         time::local_with_zone(at, site.timezone)
     );
-    text.push_str(&figures::table(
-        &[
-            "POINT",
-            "VALUE",
-            "TEMP",
-            "AGE",
-            "BAND",
-            "FLAG",
-            "PROBE",
-            "STATUS",
-            "CALIBRATE BY",
-        ],
-        rows.iter().map(|row| cells(site, row, at)).collect(),
-        &[],
-    ));
+    let mut header = vec![
+        "POINT",
+        "VALUE",
+        "TEMP",
+        "AGE",
+        "BAND",
+        "FLAG",
+        "PROBE",
+        "STATUS",
+        "CALIBRATE BY",
+    ];
+    let mut body: Vec<_> = rows.iter().map(|row| cells(site, row, at)).collect();
+    // What a narrow terminal can spare: the limits stand in the configuration, the temperature in a wider one.
+    if figures::terminal_columns().is_some_and(|columns| columns < NARROW) {
+        for spared in ["BAND", "TEMP"] {
+            if let Some(place) = header.iter().position(|name| *name == spared) {
+                header.remove(place);
+                for cells in &mut body {
+                    cells.remove(place);
+                }
+            }
+        }
+    }
+    text.push_str(&figures::table(&header, body, &[]));
     let reasons: Vec<String> = rows.iter().filter_map(reasons).collect();
     if !reasons.is_empty() {
         text.push('\n');
