@@ -2,6 +2,7 @@
 
 use super::ahead::{self, Learnt};
 use super::context::{Context, put};
+use super::derived;
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures::{self, NOTHING};
@@ -161,6 +162,14 @@ pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<Stri
         }
     }
     text.push_str(&figures::table(&header, body, &[]));
+    let derived: String = rows
+        .iter()
+        .flat_map(|row| row.derived.iter().map(|figure| figure.line(row.point)))
+        .collect();
+    if !derived.is_empty() {
+        text.push('\n');
+        text.push_str(&derived);
+    }
     let reasons: Vec<String> = rows.iter().filter_map(reasons).collect();
     if !reasons.is_empty() {
         text.push('\n');
@@ -185,6 +194,8 @@ struct Row<'a> {
     probe: Option<&'a ProbeHistory>,
     condition: Option<(Status, Vec<String>)>,
     calibrate_by: Option<Timestamp>,
+    /// Ammonia and carbon dioxide, where the water is described; of a fresh reading only.
+    derived: Vec<derived::Figure>,
 }
 
 fn rows<'a>(
@@ -227,6 +238,9 @@ fn rows<'a>(
                 probe,
                 condition,
                 calibrate_by: calibrate_by.map(|when| when.by),
+                derived: reading
+                    .filter(|_| !stale)
+                    .map_or_else(Vec::new, |reading| derived::figures_of(point, &reading)),
             })
         })
         .collect()
@@ -329,6 +343,9 @@ fn object(row: &Row<'_>) -> Value {
         "calibrate_by": row.calibrate_by.map(time::rfc3339_ms),
         "alarm": null,
     });
+    for figure in &row.derived {
+        object[figure.key] = figure.object();
+    }
     if row.point.quantity == ProbeKind::Orp {
         object["eh"] = json!(row.eh.map(|eh| eh.value));
     }
