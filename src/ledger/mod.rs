@@ -7,12 +7,17 @@
 mod audit;
 mod book;
 mod chain;
+mod chores;
+mod codec;
 mod error;
 pub mod event;
 mod import;
 mod reader;
+mod rollup;
 mod row;
+mod rows;
 mod schema;
+mod seal;
 mod store;
 mod writer;
 

@@ -7,15 +7,14 @@ use super::book;
 use super::error::LedgerError;
 use super::event::Event;
 use super::row::{self, PointId};
+use super::rows::At;
 use super::schema;
 use crate::electrode::history::{Book, EventId, Tag};
 use crate::electrode::units::Timestamp;
 use crate::watch::reading::Reading;
-use rusqlite::{Connection, OptionalExtension, params};
+use rusqlite::{Connection, OptionalExtension};
 use std::ops::ControlFlow;
 use std::path::{Path, PathBuf};
-
-const HOUR_MS: i64 = 3_600_000;
 
 /// The ledger open for reading only.
 #[derive(Debug)]
@@ -100,28 +99,27 @@ impl Reader {
         point: PointId,
         at: Option<Timestamp>,
     ) -> Result<Option<(i64, Reading)>, LedgerError> {
-        let read = || {
-            match at {
+        let row = match at {
+            Some(at) => self.at_point(point).newest(at.ms())?,
             None => self
-                .connection
-                .prepare_cached(concat!("SELECT ", row::columns!(), " FROM point_state WHERE point_id = ?"))?
-                .query_row([point.id], |row| row::read(row, point.kind))
-                .optional(),
-            Some(at) => self
                 .connection
                 .prepare_cached(concat!(
                     "SELECT ",
                     row::columns!(),
-                    " FROM reading WHERE point_id = ? AND t_ms <= ? ORDER BY t_ms DESC, seq DESC LIMIT 1"
-                ))?
-                .query_row([point.id, at.ms()], |row| row::read(row, point.kind))
-                .optional(),
-        }
+                    " FROM point_state WHERE point_id = ?"
+                ))
+                .and_then(|mut statement| {
+                    statement
+                        .query_row([point.id], |row| row::read(row, 0))
+                        .optional()
+                })
+                .map_err(self.at("read the newest reading"))?,
         };
-        read().map_err(self.at("read the newest reading"))
+        Ok(row.map(|row| row::unpack(point.kind, &row)))
     }
 
-    /// Gives `each` the readings of `point` from `from` up to before `to` with their sequence numbers: hour by hour, by sequence within the hour, until it breaks.
+    /// Gives `each` the readings of `point` from `from` up to before `to` with their sequence numbers: by time, then by sequence,
+    /// until it breaks. It is read hour by hour; what arrives after the call began is not seen.
     ///
     /// # Errors
     /// What the database says.
@@ -132,24 +130,10 @@ impl Reader {
         to: Timestamp,
         mut each: impl FnMut(i64, Reading) -> ControlFlow<()>,
     ) -> Result<(), LedgerError> {
-        let mut from_ms = from.ms();
-        while let Some(first) = self
-            .first_at_or_after(point, from_ms)?
-            .filter(|first| *first < to.ms())
-        {
-            let end = first
-                .div_euclid(HOUR_MS)
-                .saturating_add(1)
-                .saturating_mul(HOUR_MS)
-                .min(to.ms());
-            for (seq, reading) in self.span(point, first, end)? {
-                if each(seq, reading).is_break() {
-                    return Ok(());
-                }
-            }
-            from_ms = end;
-        }
-        Ok(())
+        self.at_point(point).walk(&(from.ms()..to.ms()), |row| {
+            let (seq, reading) = row::unpack(point.kind, row);
+            each(seq, reading)
+        })
     }
 
     /// What is broken in the chain of events and in the database, and where.
@@ -160,32 +144,12 @@ impl Reader {
         audit::audit(&self.connection).map_err(self.at("audit"))
     }
 
-    fn first_at_or_after(&self, point: PointId, t_ms: i64) -> Result<Option<i64>, LedgerError> {
-        self.connection
-            .prepare_cached("SELECT min(t_ms) FROM reading WHERE point_id = ? AND t_ms >= ?")
-            .and_then(|mut statement| statement.query_row([point.id, t_ms], |row| row.get(0)))
-            .map_err(self.at("read readings"))
-    }
-
-    fn span(
-        &self,
-        point: PointId,
-        from_ms: i64,
-        to_ms: i64,
-    ) -> Result<Vec<(i64, Reading)>, LedgerError> {
-        let read = || -> rusqlite::Result<Vec<(i64, Reading)>> {
-            self.connection
-                .prepare_cached(concat!(
-                    "SELECT ",
-                    row::columns!(),
-                    " FROM reading WHERE point_id = ? AND t_ms >= ? AND t_ms < ? ORDER BY seq"
-                ))?
-                .query_map(params![point.id, from_ms, to_ms], |row| {
-                    row::read(row, point.kind)
-                })?
-                .collect()
-        };
-        read().map_err(self.at("read readings"))
+    fn at_point(&self, point: PointId) -> At<'_> {
+        At {
+            connection: &self.connection,
+            path: &self.path,
+            point: point.id,
+        }
     }
 
     fn at(&self, doing: &'static str) -> impl Fn(rusqlite::Error) -> LedgerError {
