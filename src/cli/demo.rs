@@ -18,7 +18,7 @@ use crate::electrode::history::Book;
 use crate::electrode::units::Timestamp;
 use crate::ledger::event::{Body, NewEvent};
 use crate::ledger::{Ledger, Reader};
-use crate::pipeline::{Arrival, Figure, read};
+use crate::pipeline::{Arrival, Figure, Standing, read};
 use crate::simulation::logbook::{Entered, Entry, InBeaker};
 use crate::simulation::site::DemoSite;
 use indicatif::{ProgressBar, ProgressStyle};
@@ -140,6 +140,7 @@ fn history(demo: &DemoSite, site: &Site, days: u32, now: Timestamp) -> Result<u6
     if let Ok(style) = ProgressStyle::with_template("history {bar:40} {pos} of {len} readings") {
         bar.set_style(style);
     }
+    let standing = Standing::new(Arc::new(book));
     let mut rows = Vec::with_capacity(CHUNK);
     let mut kept = 0;
     for row in demo.history() {
@@ -150,7 +151,7 @@ fn history(demo: &DemoSite, site: &Site, days: u32, now: Timestamp) -> Result<u6
         };
         rows.push((
             ids[row.point],
-            read(&site.points[row.point], &book, &arrival),
+            read(&site.points[row.point], &standing, &arrival),
         ));
         if rows.len() == CHUNK {
             kept += ledger

@@ -1,11 +1,12 @@
 //! # `health`: how each electrode is doing
 
+use super::ahead::{self, Ahead, Learnt};
 use super::context::{Context, put};
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures;
 use super::probe::{in_service, sits_at};
-use super::status::{Moment, stale};
+use super::status::Moment;
 use crate::config::site::Site;
 use crate::electrode::fit::Limits;
 use crate::electrode::history::{Book, Calibration, Dated, ProbeHistory, ProbeKind, Tag};
@@ -45,9 +46,10 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
             .filter(|probe| !probe.retired_at(at))
             .collect(),
     };
+    let learnt = Learnt::from(&book, at);
     let healths = probes
         .into_iter()
-        .map(|probe| health(&site, (&reader, &points), &book, (probe, moment)))
+        .map(|probe| health(&site, (&reader, &points), (&book, &learnt), (probe, moment)))
         .collect::<Result<Vec<_>, _>>()
         .map_err(failed)?;
     if context.json {
@@ -73,21 +75,27 @@ struct Health<'a> {
     calibration: Option<&'a Dated<Calibration>>,
     status: Status,
     reasons: Vec<String>,
+    /// What its track says; `None` before its first reading in a standard.
+    ahead: Option<Ahead>,
 }
 
 fn health<'a>(
     site: &Site,
     (reader, points): (&Reader, &[(Tag, PointId)]),
-    book: &Book,
+    (book, learnt): (&Book, &Learnt),
     (probe, moment): (&'a ProbeHistory, Moment),
 ) -> Result<Health<'a>, LedgerError> {
     let at = moment.at();
     let tag = sits_at(book, probe, at);
     let point = tag.and_then(|tag| site.points.iter().find(|point| point.tag == *tag));
-    let reading = match tag {
+    let newest = match tag {
         Some(tag) => moment.newest(reader, points, tag)?,
         None => None,
     };
+    let reading = newest.map(|newest| newest.reading);
+    let ahead = learnt
+        .track(probe)
+        .map(|track| ahead::look(&track, probe, (point, reading.as_ref()), at));
     // Another electrode may have taken its place; then it sits nowhere and owes no readings.
     let displaced = ProbeHistory {
         moves: Vec::new(),
@@ -98,8 +106,8 @@ fn health<'a>(
         probe: if tag.is_some() { probe } else { &displaced },
         reading: reading.as_ref(),
         stale: point
-            .zip(reading.as_ref())
-            .is_some_and(|(point, reading)| stale(point, reading, at)),
+            .zip(newest)
+            .is_some_and(|(point, newest)| newest.stale(point, at)),
         on_hold: tag.is_some_and(|tag| book.hold_at(tag, at).is_some()),
         tolerance: point.map_or(f64::INFINITY, |point| point.tolerance),
     });
@@ -109,42 +117,48 @@ fn health<'a>(
         calibration: probe.calibration_at(at),
         status,
         reasons,
+        ahead,
     })
 }
 
-/// The contract's shape. Slope and offset as now estimated are, for now, those of the calibration in force.
+/// The contract's shape: slope and offset as now estimated, and in `calibration` as last accepted.
 fn object(context: &Context, health: &Health<'_>) -> Value {
-    let line = health.calibration.map(|calibration| &calibration.fact.line);
+    let now = health.ahead.as_ref().and_then(|ahead| ahead.now);
+    let line = now.map(|now| now.line());
+    let by = health.ahead.as_ref().and_then(|ahead| ahead.calibrate_by);
     let slope = line.map(|line| line.slope);
-    let u_slope = line.map(|line| 2.0 * line.var_slope.sqrt());
-    let offset_mv = line.map(|line| line.offset_mv);
-    let u_offset_mv = line.map(|line| 2.0 * line.var_offset_mv2.sqrt());
+    let time = |t| context.rfc3339(t);
     json!({
         "probe": health.probe.spec.id,
         "point": health.point,
         "status": health.status,
         "reasons": health.reasons,
         "slope": slope,
-        "u_slope": u_slope,
-        "offset_mv": offset_mv,
-        "u_offset_mv": u_offset_mv,
+        "u_slope": line.map(|line| 2.0 * line.var_slope.sqrt()),
+        "offset_mv": line.map(|line| line.offset_mv),
+        "u_offset_mv": line.map(|line| 2.0 * line.var_offset_mv2.sqrt()),
         "slope_mv_per_ph_25c": match health.probe.spec.kind {
             ProbeKind::Ph => slope.map(|slope| slope * figures::K_25C),
             ProbeKind::Orp => None,
         },
-        "drift_mv_per_day": null,
-        "calibrate_by": null,
-        "calibrate_by_earliest": null,
-        "calibrate_by_latest": null,
+        "drift_mv_per_day": now.map(|now| now.drift_mv_per_day()),
+        "n_events": health.ahead.as_ref().map(|ahead| ahead.n_events),
+        "calibrate_by": by.map(|by| time(by.by)),
+        "calibrate_by_earliest": by.map(|by| time(by.earliest)),
+        "calibrate_by_latest": by.map(|by| time(by.latest)),
+        "calibrate_by_reason": by.map(|by| ahead::reason_word(by.reason)),
         "causes": [],
-        "calibration": health.calibration.map(|calibration| json!({
-            "id": calibration.id,
-            "at": context.rfc3339(calibration.at),
-            "slope": slope,
-            "offset_mv": offset_mv,
-            "u_slope": u_slope,
-            "u_offset_mv": u_offset_mv,
-        })),
+        "calibration": health.calibration.map(|calibration| {
+            let line = &calibration.fact.line;
+            json!({
+                "id": calibration.id,
+                "at": time(calibration.at),
+                "slope": line.slope,
+                "offset_mv": line.offset_mv,
+                "u_slope": 2.0 * line.var_slope.sqrt(),
+                "u_offset_mv": 2.0 * line.var_offset_mv2.sqrt(),
+            })
+        }),
     })
 }
 
@@ -186,6 +200,9 @@ fn told(context: &Context, site: &Site, health: &Health<'_>, at: Timestamp) -> S
             ));
         }
     }
+    if let Some(ahead) = &health.ahead {
+        facts.extend(estimated(context, site, health, ahead));
+    }
     format!(
         "`{}` ({}) {place}: {}\n{}",
         spec.id,
@@ -193,4 +210,45 @@ fn told(context: &Context, site: &Site, health: &Health<'_>, at: Timestamp) -> S
         health.status,
         figures::facts(&facts)
     )
+}
+
+/// What the track says, as lines.
+fn estimated(
+    context: &Context,
+    site: &Site,
+    health: &Health<'_>,
+    ahead: &Ahead,
+) -> Vec<(&'static str, String)> {
+    let mut facts = Vec::new();
+    if let Some(now) = ahead.now {
+        let line = now.line();
+        let slope = match health.probe.spec.kind {
+            ProbeKind::Ph => format!("slope {}, ", figures::slope(&line)),
+            ProbeKind::Orp => String::new(),
+        };
+        let (offset, drift) = (figures::offset(&line), now.drift_mv_per_day());
+        let n_events = ahead.n_events;
+        let plural = if n_events == 1 { "" } else { "s" };
+        facts.push((
+            "thought now",
+            format!("{slope}offset {offset}, drifting {drift:+.2} mV a day (from {n_events} visit{plural})"),
+        ));
+    }
+    if let Some(when) = ahead.calibrate_by {
+        let day = |t| {
+            let local = context.local(site, t);
+            local.split(' ').next().unwrap_or_default().to_owned()
+        };
+        facts.push((
+            "calibrate by",
+            format!(
+                "{} (between {} and {} the error passes the tolerance); {}",
+                day(when.by),
+                day(when.earliest),
+                day(when.latest),
+                ahead::because(when.reason)
+            ),
+        ));
+    }
+    facts
 }

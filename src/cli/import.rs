@@ -5,16 +5,17 @@ use super::exit::Exit;
 use super::failure::Failure;
 use super::rows::{Broken, Row, Rows};
 use crate::config::site::Site;
-use crate::electrode::history::{Book, EventId};
+use crate::electrode::history::EventId;
 use crate::ledger::event::Body;
 use crate::ledger::{Imported, Ledger, LedgerError, PointId};
-use crate::pipeline::{Arrival, Figure, read};
+use crate::pipeline::{Arrival, Figure, Standing, read};
 use crate::watch::reading::Reading;
 use indicatif::{ProgressBar, ProgressStyle};
 use serde_json::json;
 use std::fs::File;
 use std::io::BufReader;
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 /// Broken rows shown one by one; of the rest only the number.
 const SHOWN: usize = 20;
@@ -62,7 +63,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
     let bar = bar(size);
     let failed = |error: LedgerError| ledger_failed(&error);
     let mut ledger = context.writer(&site)?;
-    let book = context.book(&site)?;
+    let standing = Standing::new(Arc::new(context.book(&site)?));
     let ids = ids(&mut ledger, &site).map_err(failed)?;
     let mut tally = Tally::default();
     let mut batch: Vec<(PointId, Reading)> = Vec::with_capacity(BATCH);
@@ -70,7 +71,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
         let row = rows.next()?;
         let done = row.is_none();
         match row {
-            Some(Ok(row)) => batch.push((ids[row.point], judged(&site, &book, &row))),
+            Some(Ok(row)) => batch.push((ids[row.point], judged(&site, &standing, &row))),
             Some(Err(broken)) => tally.note(broken),
             None => {}
         }
@@ -120,13 +121,13 @@ impl Tally {
 }
 
 /// The way of a live sample.
-fn judged(site: &Site, book: &Book, row: &Row) -> Reading {
+fn judged(site: &Site, standing: &Standing, row: &Row) -> Reading {
     let arrival = Arrival {
         at: row.at,
         mv: Figure::Number(row.mv),
         temperature: row.temp_c.map_or(Figure::Nothing, Figure::Number),
     };
-    read(&site.points[row.point], book, &arrival)
+    read(&site.points[row.point], standing, &arrival)
 }
 
 fn ids(ledger: &mut Ledger, site: &Site) -> Result<Vec<PointId>, LedgerError> {

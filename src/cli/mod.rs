@@ -4,11 +4,13 @@
 //! Always: 1. a wrong request writes nothing. 2. a value never stands without its unit. 3. words carry the meaning, colour only repeats it.
 //! Not here: what a figure means (the science rooms), SQL (`ledger`).
 
+mod ahead;
 mod audit;
 mod calibrate;
 mod config;
 mod context;
 mod demo;
+mod derived;
 mod exit;
 mod export;
 mod failure;

@@ -1,6 +1,8 @@
 //! # `status`: every point now
 
+use super::ahead::{self, Learnt};
 use super::context::{Context, put};
+use super::derived;
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures::{self, NOTHING};
@@ -77,7 +79,7 @@ impl Moment {
         reader: &Reader,
         points: &[(Tag, PointId)],
         tag: &Tag,
-    ) -> Result<Option<Reading>, LedgerError> {
+    ) -> Result<Option<Newest>, LedgerError> {
         let Some((_, id)) = points.iter().find(|(known, _)| known == tag) else {
             return Ok(None);
         };
@@ -85,9 +87,46 @@ impl Moment {
             Self::Now(_) => None,
             Self::Then(at) => Some(at),
         };
-        Ok(reader.newest(*id, until)?.map(|(_, reading)| reading))
+        let Some((_, reading)) = reader.newest(*id, until)? else {
+            return Ok(None);
+        };
+        let before = reader.newest(*id, Some(reading.at.plus_ms(-1)))?;
+        let spacing_ms = before.map_or(0, |(_, before)| reading.at.ms() - before.at.ms());
+        Ok(Some(Newest {
+            reading,
+            spacing_ms,
+        }))
     }
 }
+
+/// The newest reading of a point, and how long after the one before it came.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Newest {
+    pub(super) reading: Reading,
+    spacing_ms: i64,
+}
+
+/// Readings farther apart than this are not a rhythm but a gap, ms.
+const SLOWEST_RHYTHM_MS: i64 = 900_000;
+
+impl Newest {
+    /// Whether it is too old to speak for `at`: three logging intervals, or three of the rhythm it came in, a minute at least.
+    pub(super) fn stale(&self, point: &Point, at: Timestamp) -> bool {
+        let rhythm_ms = if self.spacing_ms <= SLOWEST_RHYTHM_MS {
+            self.spacing_ms
+        } else {
+            0
+        };
+        let limit_ms = figures::ms(point.every)
+            .max(rhythm_ms)
+            .saturating_mul(3)
+            .max(60_000);
+        at.ms().saturating_sub(self.reading.at.ms()) > limit_ms
+    }
+}
+
+/// Columns of a terminal below which the table leaves something out.
+const NARROW: u16 = 110;
 
 /// The status table as text.
 pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<String, LedgerError> {
@@ -99,21 +138,38 @@ pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<Stri
         site.name,
         time::local_with_zone(at, site.timezone)
     );
-    text.push_str(&figures::table(
-        &[
-            "POINT",
-            "VALUE",
-            "TEMP",
-            "AGE",
-            "BAND",
-            "FLAG",
-            "PROBE",
-            "STATUS",
-            "CALIBRATE BY",
-        ],
-        rows.iter().map(|row| cells(row, at)).collect(),
-        &[],
-    ));
+    let mut header = vec![
+        "POINT",
+        "VALUE",
+        "TEMP",
+        "AGE",
+        "BAND",
+        "FLAG",
+        "PROBE",
+        "STATUS",
+        "CALIBRATE BY",
+    ];
+    let mut body: Vec<_> = rows.iter().map(|row| cells(site, row, at)).collect();
+    // What a narrow terminal can spare: the limits stand in the configuration, the temperature in a wider one.
+    if figures::terminal_columns().is_some_and(|columns| columns < NARROW) {
+        for spared in ["BAND", "TEMP"] {
+            if let Some(place) = header.iter().position(|name| *name == spared) {
+                header.remove(place);
+                for cells in &mut body {
+                    cells.remove(place);
+                }
+            }
+        }
+    }
+    text.push_str(&figures::table(&header, body, &[]));
+    let derived: String = rows
+        .iter()
+        .flat_map(|row| row.derived.iter().map(|figure| figure.line(row.point)))
+        .collect();
+    if !derived.is_empty() {
+        text.push('\n');
+        text.push_str(&derived);
+    }
     let reasons: Vec<String> = rows.iter().filter_map(reasons).collect();
     if !reasons.is_empty() {
         text.push('\n');
@@ -137,6 +193,9 @@ struct Row<'a> {
     eh: Option<Converted>,
     probe: Option<&'a ProbeHistory>,
     condition: Option<(Status, Vec<String>)>,
+    calibrate_by: Option<Timestamp>,
+    /// Ammonia and carbon dioxide, where the water is described; of a fresh reading only.
+    derived: Vec<derived::Figure>,
 }
 
 fn rows<'a>(
@@ -147,12 +206,14 @@ fn rows<'a>(
 ) -> Result<Vec<Row<'a>>, LedgerError> {
     let at = moment.at();
     let points = reader.points()?;
+    let learnt = Learnt::from(book, at);
     site.points
         .iter()
         .map(|point| {
-            let reading = moment.newest(reader, &points, &point.tag)?;
+            let newest = moment.newest(reader, &points, &point.tag)?;
+            let reading = newest.map(|newest| newest.reading);
             let probe = book.probe_at(&point.tag, at);
-            let stale = reading.is_some_and(|reading| stale(point, &reading, at));
+            let stale = newest.is_some_and(|newest| newest.stale(point, at));
             let condition = probe.map(|probe| {
                 condition(&Evidence {
                     at,
@@ -163,6 +224,10 @@ fn rows<'a>(
                     tolerance: point.tolerance,
                 })
             });
+            let calibrate_by = probe.and_then(|probe| {
+                let track = learnt.track(probe)?;
+                ahead::look(&track, probe, (Some(point), reading.as_ref()), at).calibrate_by
+            });
             Ok(Row {
                 point,
                 stale,
@@ -172,15 +237,13 @@ fn rows<'a>(
                 reading,
                 probe,
                 condition,
+                calibrate_by: calibrate_by.map(|when| when.by),
+                derived: reading
+                    .filter(|_| !stale)
+                    .map_or_else(Vec::new, |reading| derived::figures_of(point, &reading)),
             })
         })
         .collect()
-}
-
-/// Whether the newest reading of a point is too old to speak for `at`: three logging intervals, a minute at least.
-pub(super) fn stale(point: &Point, reading: &Reading, at: Timestamp) -> bool {
-    let limit_ms = figures::ms(point.every).saturating_mul(3).max(60_000);
-    at.ms().saturating_sub(reading.at.ms()) > limit_ms
 }
 
 /// Against the standard hydrogen electrode, for an ORP reading that has a value and a temperature.
@@ -196,7 +259,7 @@ fn eh(point: &Point, probe: &ProbeHistory, reading: &Reading) -> Option<Converte
     orp::eh(orp, probe.spec.reference, t, point.u_temp_c).ok()
 }
 
-fn cells(row: &Row<'_>, at: Timestamp) -> Vec<String> {
+fn cells(site: &Site, row: &Row<'_>, at: Timestamp) -> Vec<String> {
     let kind = row.point.quantity;
     let nothing = || NOTHING.to_owned();
     let (value, temp, age, flag) = match &row.reading {
@@ -239,7 +302,11 @@ fn cells(row: &Row<'_>, at: Timestamp) -> Vec<String> {
         row.condition
             .as_ref()
             .map_or_else(nothing, |(status, _)| status.to_string()),
-        nothing(),
+        row.calibrate_by.map_or_else(nothing, |by| {
+            let day = time::local(by, site.timezone);
+            let day = day.split(' ').next().unwrap_or_default().to_owned();
+            if by <= at { format!("{day}, due") } else { day }
+        }),
     ]
 }
 
@@ -273,9 +340,12 @@ fn object(row: &Row<'_>) -> Value {
         "probe": row.probe.map(|probe| &probe.spec.id),
         "calibration": reading.and_then(|reading| reading.calibration),
         "probe_status": row.condition.as_ref().map(|(status, _)| status),
-        "calibrate_by": null,
+        "calibrate_by": row.calibrate_by.map(time::rfc3339_ms),
         "alarm": null,
     });
+    for figure in &row.derived {
+        object[figure.key] = figure.object();
+    }
     if row.point.quantity == ProbeKind::Orp {
         object["eh"] = json!(row.eh.map(|eh| eh.value));
     }

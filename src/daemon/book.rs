@@ -1,10 +1,12 @@
-//! # Keeping up with the book
+//! # Keeping up with what stands
 //!
 //! The command line writes calibrations, placements and holds into the ledger; a thread looks whether anything has changed
-//! (`PRAGMA data_version`, a microsecond a look) and hands the new book to the hub.
+//! (`PRAGMA data_version`, a microsecond a look) and hands what stands now to the hub:
+//! the book, and each electrode's track run over it, which takes a while and so has a thread of its own.
 
 use crate::electrode::history::Book;
 use crate::ledger::{LedgerError, Reader};
+use crate::pipeline::Standing;
 use std::path::PathBuf;
 use std::sync::Arc;
 use std::sync::mpsc::{RecvTimeoutError, Sender, channel};
@@ -20,7 +22,7 @@ const LOOK: Duration = Duration::from_millis(200);
 pub struct BookWatch {
     stop: Option<Sender<()>>,
     thread: Option<JoinHandle<()>>,
-    book: watch::Receiver<Arc<Book>>,
+    standing: watch::Receiver<Arc<Standing>>,
 }
 
 impl BookWatch {
@@ -34,18 +36,19 @@ impl BookWatch {
             reader,
             ledger,
             book: Book::default(),
+            standing: Arc::default(),
             last: 0,
             version: None,
         };
         keeper.catch_up()?;
-        let (tell, book) = watch::channel(Arc::new(keeper.book.clone()));
+        let (tell, standing) = watch::channel(keeper.standing());
         let (stop, stopped) = channel();
         let spawn = move || {
             let mut failing = false;
             while matches!(stopped.recv_timeout(LOOK), Err(RecvTimeoutError::Timeout)) {
                 match keeper.catch_up() {
                     Ok(true) => {
-                        tell.send_replace(Arc::new(keeper.book.clone()));
+                        tell.send_replace(keeper.standing());
                         failing = false;
                     }
                     Ok(false) => failing = false,
@@ -66,13 +69,13 @@ impl BookWatch {
         Ok(Self {
             stop: Some(stop),
             thread,
-            book,
+            standing,
         })
     }
 
-    /// The book, and word of its changes.
-    pub fn book(&self) -> watch::Receiver<Arc<Book>> {
-        self.book.clone()
+    /// What stands, and word of its changes.
+    pub fn standing(&self) -> watch::Receiver<Arc<Standing>> {
+        self.standing.clone()
     }
 }
 
@@ -90,11 +93,17 @@ struct Keeper {
     reader: Reader,
     ledger: PathBuf,
     book: Book,
+    standing: Arc<Standing>,
     last: i64,
     version: Option<i64>,
 }
 
 impl Keeper {
+    fn standing(&mut self) -> Arc<Standing> {
+        self.standing = Arc::new(self.standing.with(Arc::new(self.book.clone())));
+        Arc::clone(&self.standing)
+    }
+
     /// Enters what is new; says whether anything was.
     fn catch_up(&mut self) -> Result<bool, LedgerError> {
         let version = self.reader.data_version()?;

@@ -1,18 +1,17 @@
 //! # The hub: where samples become rows
 //!
-//! in: what the lines say, the time, the book. out: batches of rows and events for the writer.
+//! in: what the lines say, the time, what stands. out: batches of rows and events for the writer.
 //! No port, no file, no clock here: the task in `daemon/run.rs` brings all three.
 
 use crate::config::site::{Point, SignalRef, Site, Temperature};
 use crate::daemon::clock::Step;
 use crate::daemon::line::FromLine;
-use crate::electrode::history::Book;
 use crate::electrode::units::Timestamp;
 use crate::ledger::event::{Body, NewEvent};
 use crate::ledger::{Batch, PointId};
 use crate::meters::sample::{self, Sample};
 use crate::pipeline::interval::Interval;
-use crate::pipeline::{Arrival, Figure, read};
+use crate::pipeline::{Arrival, Figure, Standing, read};
 use std::sync::Arc;
 
 /// The name under which the daemon enters events.
@@ -24,7 +23,7 @@ pub struct Hub {
     site: Arc<Site>,
     ids: Vec<PointId>,
     intervals: Vec<Interval>,
-    book: Arc<Book>,
+    standing: Arc<Standing>,
     batch: Batch,
     /// A clock step that waits for the first reading after it.
     step: Option<Step>,
@@ -32,7 +31,12 @@ pub struct Hub {
 
 impl Hub {
     /// For a site whose points have these ids in the ledger.
-    pub fn new(site: Arc<Site>, ids: Vec<PointId>, book: Arc<Book>, now: Timestamp) -> Self {
+    pub fn new(
+        site: Arc<Site>,
+        ids: Vec<PointId>,
+        standing: Arc<Standing>,
+        now: Timestamp,
+    ) -> Self {
         let interval =
             |p: &Point| Interval::new(i64::try_from(p.every.as_millis()).unwrap_or(i64::MAX), now);
         let intervals = site.points.iter().map(interval).collect();
@@ -40,7 +44,7 @@ impl Hub {
             site,
             ids,
             intervals,
-            book,
+            standing,
             batch: Batch::default(),
             step: None,
         }
@@ -48,7 +52,7 @@ impl Hub {
 
     /// Another configuration: points of the same tag and interval keep what they have gathered.
     pub fn reload(&mut self, site: Arc<Site>, ids: Vec<PointId>, now: Timestamp) {
-        let mut fresh = Self::new(site, ids, Arc::clone(&self.book), now);
+        let mut fresh = Self::new(site, ids, Arc::clone(&self.standing), now);
         for (n, point) in fresh.site.points.iter().enumerate() {
             let same = |old: &Point| old.tag == point.tag && old.every == point.every;
             if let Some(old) = self.site.points.iter().position(same) {
@@ -61,8 +65,8 @@ impl Hub {
     }
 
     /// What is in force has changed.
-    pub fn set_book(&mut self, book: Arc<Book>) {
-        self.book = book;
+    pub fn set_standing(&mut self, standing: Arc<Standing>) {
+        self.standing = standing;
     }
 
     /// The wall clock jumped; the event goes with the first reading after it.
@@ -186,7 +190,7 @@ impl Hub {
                 },
             );
         }
-        let reading = read(&self.site.points[n], &self.book, arrival);
+        let reading = read(&self.site.points[n], &self.standing, arrival);
         self.batch.rows.push((self.ids[n], reading));
     }
 

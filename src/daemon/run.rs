@@ -7,9 +7,9 @@ use crate::daemon::book::BookWatch;
 use crate::daemon::clock::{self, StepWatch};
 use crate::daemon::hub::Hub;
 use crate::daemon::line::{FromLine, run_line};
-use crate::electrode::history::Book;
 use crate::ledger::event::Body;
 use crate::ledger::{Clock, Ledger, LedgerError, PointId, Writer, WriterStatus};
+use crate::pipeline::Standing;
 use sd_notify::NotifyState;
 use std::fs::File;
 use std::path::{Path, PathBuf};
@@ -73,7 +73,7 @@ struct Daemon {
     site: Arc<Site>,
     hub: Hub,
     writer: Writer,
-    book: watch::Receiver<Arc<Book>>,
+    standing: watch::Receiver<Arc<Standing>>,
     lines: Lines,
     from_lines: mpsc::Receiver<FromLine>,
     steps: StepWatch,
@@ -114,8 +114,8 @@ pub async fn run(
     )
     .map_err(ledger_error)?;
     let now = clock::now();
-    let book = watched.book();
-    let hub = Hub::new(Arc::clone(&site), ids, Arc::clone(&book.borrow()), now);
+    let standing = watched.standing();
+    let hub = Hub::new(Arc::clone(&site), ids, Arc::clone(&standing.borrow()), now);
     let (to_hub, from_lines) = mpsc::channel(LINE_QUEUE);
     let lines = Lines::start(&site, &to_hub);
     let steps = StepWatch::new(now, clock::since_boot_ms());
@@ -124,7 +124,7 @@ pub async fn run(
         site,
         hub,
         writer,
-        book,
+        standing,
         lines,
         from_lines,
         steps,
@@ -169,7 +169,7 @@ impl Daemon {
                     self.look_at_clock();
                     self.hub.take(message, clock::now());
                 },
-                Ok(()) = self.book.changed() => {}
+                Ok(()) = self.standing.changed() => {}
                 _ = beat.tick() => self.tell_systemd(),
                 () = tokio::time::sleep(wait) => {}
             }
@@ -177,11 +177,11 @@ impl Daemon {
             while let Ok(message) = self.from_lines.try_recv() {
                 self.hub.take(message, clock::now());
             }
-            if self.book.has_changed().unwrap_or(false) {
-                self.book.mark_unchanged();
+            if self.standing.has_changed().unwrap_or(false) {
+                self.standing.mark_unchanged();
             }
-            let book = Arc::clone(&self.book.borrow());
-            self.hub.set_book(book);
+            let standing = Arc::clone(&self.standing.borrow());
+            self.hub.set_standing(standing);
             self.hub.due(clock::now());
             self.hand_over();
         }

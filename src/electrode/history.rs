@@ -260,6 +260,8 @@ pub struct ProbeHistory {
     pub verifications: Vec<Dated<Verification>>,
     /// Services in order of time.
     pub services: Vec<Dated<Service>>,
+    /// Events somebody confirmed though they were far off: their ids and when they were confirmed.
+    pub confirmed: Vec<Dated<EventId>>,
 }
 
 impl ProbeHistory {
@@ -360,6 +362,7 @@ impl Book {
                 struck: Vec::new(),
                 verifications: Vec::new(),
                 services: Vec::new(),
+                confirmed: Vec::new(),
             });
     }
 
@@ -410,6 +413,13 @@ impl Book {
     pub fn add_service(&mut self, probe: &ProbeId, service: Dated<Service>) {
         if let Some(probe) = self.probes.get_mut(probe) {
             insert_dated(&mut probe.services, service);
+        }
+    }
+
+    /// Confirms a calibration, verification or grab sample that was held out: it counts however far off it is.
+    pub fn confirm(&mut self, probe: &ProbeId, confirmed: Dated<EventId>) {
+        if let Some(probe) = self.probes.get_mut(probe) {
+            insert_dated(&mut probe.confirmed, confirmed);
         }
     }
 

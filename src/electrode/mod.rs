@@ -4,6 +4,7 @@
 //! Always: no clock, no file, no log; quantities carry their unit in type or name; every constant names its source.
 //! Not here: judging a stream (`watch`), how facts are kept (`ledger`), what a reading makes of them (`pipeline`).
 
+pub mod ageing;
 pub mod buffers;
 pub mod convert;
 pub mod fit;

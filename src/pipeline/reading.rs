@@ -3,9 +3,11 @@
 //! Order of judging: temperature first (a failed one makes the value fail, never a silent 25 °C), then the millivolts, then
 //! who is in the liquid and what calibration is in force, then the value with its uncertainty and its tests.
 
+use super::standing::Standing;
 use crate::config::site::{Point, Sensor, Temperature};
+use crate::electrode::ageing::u_of_value;
 use crate::electrode::convert::{self, Converted, Inputs};
-use crate::electrode::history::{Book, Calibration, Dated, ElectrodeLine, ProbeHistory, ProbeKind};
+use crate::electrode::history::{Calibration, Dated, ElectrodeLine, ProbeHistory, ProbeKind};
 use crate::electrode::slope::nernst_slope;
 use crate::electrode::temperature;
 use crate::electrode::units::{Celsius, Millivolts, Ohms, Timestamp};
@@ -48,8 +50,9 @@ pub struct Arrival {
     pub temperature: Figure,
 }
 
-/// Makes a judged reading of what arrived at `point`, under what the book says was in force at that moment.
-pub fn read(point: &Point, book: &Book, arrival: &Arrival) -> Reading {
+/// Makes a judged reading of what arrived at `point`, under what stood at that moment.
+pub fn read(point: &Point, standing: &Standing, arrival: &Arrival) -> Reading {
+    let book = standing.book();
     let mut tests = Tests::NONE;
     let mv = usable_mv(arrival.mv, &mut tests);
     let temperature = usable_temperature(point, arrival.temperature);
@@ -67,24 +70,33 @@ pub fn read(point: &Point, book: &Book, arrival: &Arrival) -> Reading {
         tests.mark(Test::NoCalibration);
     }
     let u_junction = point.u_junction;
+    let now = |probe: &ProbeHistory| {
+        let stretch = standing.stretch(&probe.spec.id, arrival.at)?;
+        Some(stretch.line_at(arrival.at))
+    };
     let converted = match (mv, in_force, point.quantity) {
-        (Some(mv), Some(in_force), ProbeKind::Ph) => {
+        (Some(mv), Some((probe, calibration)), ProbeKind::Ph) => {
             temperature.usable.and_then(|(t, u_temp_c)| {
                 let inputs = Inputs {
                     u_mv: U_MV,
                     u_temp_c,
                     u_junction,
                 };
-                ph(mv, t, in_force, &inputs, &mut tests)
+                let value = ph(mv, t, (probe, calibration), &inputs, &mut tests)?;
+                let best = now(probe)
+                    .and_then(|line| convert::to_ph(mv, t, &line, probe.spec.ph_iso, &inputs).ok());
+                Some(stated(value, best))
             })
         }
-        (Some(mv), Some(in_force), ProbeKind::Orp) => {
+        (Some(mv), Some((probe, calibration)), ProbeKind::Orp) => {
             let inputs = Inputs {
                 u_mv: U_MV,
                 u_temp_c: point.u_temp_c,
                 u_junction,
             };
-            Some(orp(mv, &in_force.1.fact.line, &inputs, &mut tests))
+            let value = orp(mv, &calibration.fact.line, &inputs, &mut tests);
+            let best = now(probe).map(|line| convert::to_orp(mv, &line, &inputs));
+            Some(stated(value, best))
         }
         _ => None,
     };
@@ -102,6 +114,12 @@ pub fn read(point: &Point, book: &Book, arrival: &Arrival) -> Reading {
         tests,
         temperature_source: temperature.source,
     }
+}
+
+/// The value with the u its electrode's history gives it: it grows with age, and where the history says otherwise than the calibration.
+fn stated(value: Converted, best: Option<Converted>) -> Converted {
+    let u = best.map_or(value.u, |best| u_of_value(value.value, &best));
+    Converted { u, ..value }
 }
 
 /// The worst of the tests, on the flag's scale: fail over suspect over not evaluated over pass.
@@ -257,8 +275,9 @@ fn orp(mv: Millivolts, line: &ElectrodeLine, inputs: &Inputs, tests: &mut Tests)
 mod tests {
     use super::*;
     use crate::config::site::SignalRef;
-    use crate::electrode::history::{Hold, ProbeId, ProbeSpec, Tag, Verdict};
+    use crate::electrode::history::{Book, Hold, ProbeId, ProbeSpec, Tag, Verdict};
     use crate::electrode::orp::ReferenceElectrode;
+    use std::sync::Arc;
 
     const SIGNAL: SignalRef = SignalRef {
         meter: 0,
@@ -301,7 +320,7 @@ mod tests {
     }
 
     /// A probe at POND-3 from 0 ms, calibrated at 1000 ms: offset 0, slope 1.
-    fn book() -> Book {
+    fn facts() -> Book {
         let mut book = Book::default();
         let probe = ProbeId::from("G-1");
         let spec = ProbeSpec {
@@ -333,6 +352,10 @@ mod tests {
         };
         book.add_calibration(dated(3, 1_000, calibration));
         book
+    }
+
+    fn book() -> Standing {
+        Standing::new(Arc::new(facts()))
     }
 
     fn arrival(at_ms: i64, mv: f64, temp_c: f64) -> Arrival {
@@ -405,14 +428,15 @@ mod tests {
 
     #[test]
     fn a_hold_marks_the_reading_and_ends_by_itself() {
-        let mut book = book();
+        let mut book = facts();
         let hold = Hold {
             point: Tag::from("POND-3"),
             until: Timestamp::from_ms(5_000),
             why: "cleaning".to_owned(),
         };
         book.add_hold(dated(4, 3_000, hold));
-        let flag_at = |at_ms| read(&measured(), &book, &arrival(at_ms, -50.0, 25.0)).flag;
+        let standing = Standing::new(Arc::new(book));
+        let flag_at = |at_ms| read(&measured(), &standing, &arrival(at_ms, -50.0, 25.0)).flag;
         assert_eq!(
             [2_999, 3_000, 4_999, 5_000].map(flag_at),
             [

@@ -5,6 +5,7 @@
 //! Always: what a meter shows is a function of the time alone, so history and live readings join without a seam.
 //! Not here: importing the history, entering the events, reading the lines: the demo does it as for a real site.
 
+pub mod ageing;
 pub mod electrode;
 pub mod liquid;
 pub mod logbook;
