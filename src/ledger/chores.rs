@@ -33,7 +33,7 @@ impl Chores {
             self.rests_since = None;
         }
         let due = (now.ms() - SETTLED_MS).div_euclid(HOUR_MS) * HOUR_MS;
-        if self.sealed_before != Some(due) {
+        if self.pass.is_none() && self.sealed_before != Some(due) {
             self.sealed_before = Some(due);
             self.pass = Some(Pass::new(Cut::Before(Timestamp::from_ms(due)), now));
         }

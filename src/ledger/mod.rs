@@ -7,6 +7,7 @@
 mod audit;
 mod book;
 mod chain;
+mod chart;
 mod chores;
 mod codec;
 mod error;
@@ -22,6 +23,7 @@ mod store;
 mod writer;
 
 pub use audit::{AuditReport, ChainBreak};
+pub use chart::Bucket;
 pub use error::LedgerError;
 pub use import::Imported;
 pub use reader::Reader;

@@ -4,6 +4,7 @@
 
 use super::audit::{self, AuditReport};
 use super::book;
+use super::chart::{self, Bucket};
 use super::error::LedgerError;
 use super::event::Event;
 use super::row::{self, PointId};
@@ -136,12 +137,35 @@ impl Reader {
         })
     }
 
-    /// What is broken in the chain of events and in the database, and where.
+    /// `point` from `from` up to before `to` in `n` buckets of equal length. Buckets of an hour or more are made of whole
+    /// hours, of a minute or more of whole minutes (what touches the span's ends counts whole), shorter ones of the readings.
+    ///
+    /// # Errors
+    /// What the database says.
+    pub fn chart(
+        &self,
+        point: PointId,
+        from: Timestamp,
+        to: Timestamp,
+        n: u32,
+    ) -> Result<Vec<Bucket>, LedgerError> {
+        chart::chart(&self.at_point(point), point.kind, &(from.ms()..to.ms()), n)
+    }
+
+    /// What is broken in the chain of events, in the sealed hours and in the database, and where.
     ///
     /// # Errors
     /// When the database cannot be read at all.
     pub fn audit(&self) -> Result<AuditReport, LedgerError> {
-        audit::audit(&self.connection).map_err(self.at("audit"))
+        self.audit_from(None)
+    }
+
+    /// As [`Reader::audit`]; `anchor` is a hash printed or mailed earlier: a chain rewritten since then does not hold it.
+    ///
+    /// # Errors
+    /// As [`Reader::audit`].
+    pub fn audit_from(&self, anchor: Option<&str>) -> Result<AuditReport, LedgerError> {
+        audit::audit(&self.connection, &self.path, anchor).map_err(self.at("audit"))
     }
 
     fn at_point(&self, point: PointId) -> At<'_> {

@@ -12,6 +12,7 @@ mod kept;
 mod killed;
 mod model;
 mod sealed;
+mod trouble;
 mod upgraded;
 mod writer;
 

@@ -1,10 +1,11 @@
 //! Closed hours become blobs; no answer changes by it.
 
 use super::{Fresh, NOW, all, event, fresh, reading};
+use halfcell::electrode::history::ProbeKind;
 use halfcell::electrode::units::Timestamp;
 use halfcell::ledger::event::Body;
-use halfcell::ledger::{Ledger, Reader};
-use halfcell::watch::reading::Reading;
+use halfcell::ledger::{ChainBreak, Ledger, Reader};
+use halfcell::watch::reading::{Reading, round_value};
 use rusqlite::Connection;
 
 const HOUR_MS: i64 = 3_600_000;
@@ -179,4 +180,105 @@ fn importing_again_over_sealed_hours_keeps_nothing_twice() {
     assert_eq!((other.kept, other.conflicting), (1, 1));
     assert_eq!(all(&f.path, f.point).len(), once.len() + 1);
     sound(&f);
+}
+
+#[test]
+fn a_chart_from_roll_ups_says_what_the_readings_say() {
+    let f = fresh();
+    let rows: Vec<_> = (0..3_000_i64)
+        .map(|n| {
+            let value = (n % 11 != 0).then(|| {
+                round_value(
+                    ProbeKind::Ph,
+                    7.0 + f64::from(i32::try_from(n % 97).unwrap()) / 100.0,
+                )
+            });
+            let row = Reading {
+                value,
+                ..reading(n * 29_000 + n % 7, 0.5)
+            };
+            (f.point, row)
+        })
+        .collect();
+    // From readings (10 s), minutes (10 min) and hours (2 h); open, half sealed, all sealed.
+    for (n, hours) in [(720, 2), (12, 2), (10, 20)] {
+        let mut f = fresh();
+        f.ledger.append(&rows, &[]).unwrap();
+        let reader = Reader::open(&f.path).unwrap();
+        let span_ms = hours * HOUR_MS;
+        let mut before = None;
+        for seal in [0, HOUR_MS + 60_000, 30 * HOUR_MS] {
+            f.ledger.seal_before(Timestamp::from_ms(seal), NOW).unwrap();
+            let chart = reader
+                .chart(
+                    f.point,
+                    Timestamp::from_ms(0),
+                    Timestamp::from_ms(span_ms),
+                    n,
+                )
+                .unwrap();
+            assert_eq!(chart.len(), n as usize);
+            let total: u64 = chart.iter().map(|bucket| bucket.n).sum();
+            let expected = rows
+                .iter()
+                .filter(|(_, r)| r.at.ms() < span_ms && r.value.is_some())
+                .count();
+            assert_eq!(total, expected as u64);
+            for (at, bucket) in chart.iter().enumerate() {
+                let end = chart.get(at + 1).map_or(span_ms, |next| next.from.ms());
+                let inside = rows
+                    .iter()
+                    .filter(|(_, r)| (bucket.from.ms()..end).contains(&r.at.ms()));
+                let values: Vec<f64> = inside.clone().filter_map(|(_, r)| r.value).collect();
+                assert_eq!(bucket.n, values.len() as u64, "{n} {seal} {at}");
+                assert_eq!(bucket.flag.is_some(), inside.count() > 0);
+                let lo = values.iter().copied().reduce(f64::min);
+                assert_eq!((bucket.lo, bucket.u_hi), (lo, lo.map(|_| 0.041_237)));
+                assert_eq!(bucket.hi, values.iter().copied().reduce(f64::max));
+            }
+            assert_eq!(
+                *before.get_or_insert(chart.clone()),
+                chart,
+                "sealing changes no chart"
+            );
+        }
+    }
+}
+
+#[test]
+fn the_audit_says_which_sealed_hour_was_changed_or_removed_and_holds_an_anchor() {
+    let mut f = fresh();
+    minutes(&mut f, 0, 180);
+    f.ledger.seal_all(NOW).unwrap();
+    let reader = Reader::open(&f.path).unwrap();
+    let report = reader.audit().unwrap();
+    assert!(report.is_sound(), "{report:?}");
+    assert_eq!((report.n_sealed, report.n_readings), (3, 180));
+    let head = report.head.unwrap();
+    minutes(&mut f, 4 * HOUR_MS, 60);
+    f.ledger.seal_all(NOW).unwrap();
+    let held = reader.audit_from(Some(&head)).unwrap();
+    assert!(held.is_sound() && held.anchor == Some(3), "{held:?}");
+    let strange = reader.audit_from(Some(&"0".repeat(64))).unwrap();
+    assert_eq!(strange.breaks, [ChainBreak::Anchor]);
+
+    let db = Connection::open(&f.path).unwrap();
+    db.execute_batch("DROP TRIGGER sealed_is_not_changed; DROP TRIGGER sealed_is_not_deleted; DROP TRIGGER reading_is_pruned_only_when_sealed")
+        .unwrap();
+    let other =
+        "(SELECT data FROM sealed WHERE id = 3), sha256 = (SELECT sha256 FROM sealed WHERE id = 3)";
+    db.execute(
+        &format!("UPDATE sealed SET data = {other} WHERE id = 2"),
+        [],
+    )
+    .unwrap();
+    db.execute("DELETE FROM sealed WHERE id = 4", []).unwrap();
+    assert_eq!(
+        reader.audit().unwrap().breaks,
+        [
+            ChainBreak::PartChanged { id: 2 },
+            ChainBreak::PartMissing { event: 4 },
+            ChainBreak::ReadingsMissing { n: 60 },
+        ]
+    );
 }
