@@ -18,6 +18,7 @@ mod grab;
 mod health;
 mod hold;
 mod import;
+mod lines;
 mod log;
 mod lot;
 mod probe;

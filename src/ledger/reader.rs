@@ -6,6 +6,7 @@ use super::audit::{self, AuditReport};
 use super::book;
 use super::error::LedgerError;
 use super::event::Event;
+use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema;
 use crate::electrode::history::{Book, EventId, Tag};
@@ -150,6 +151,14 @@ impl Reader {
             from_ms = end;
         }
         Ok(())
+    }
+
+    /// The newest state of every line that a daemon has run, by name.
+    ///
+    /// # Errors
+    /// What the database says.
+    pub fn lines(&self) -> Result<Vec<LineState>, LedgerError> {
+        line_state::all(&self.connection).map_err(self.at("read the state of the lines"))
     }
 
     /// What is broken in the chain of events and in the database, and where.

@@ -8,9 +8,10 @@ use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 /// The migrations, in order; a ledger's version is how many it has had. Never edited after release.
-const MIGRATIONS: &[&str] = &[include_str!(
-    "../../migrations/0001-readings-and-events.sql"
-)];
+const MIGRATIONS: &[&str] = &[
+    include_str!("../../migrations/0001-readings-and-events.sql"),
+    include_str!("../../migrations/0002-line-state.sql"),
+];
 
 /// "half" in ASCII, as the first migration sets it.
 const APPLICATION_ID: i64 = 1_751_215_206;

@@ -5,6 +5,7 @@
 use super::book;
 use super::error::LedgerError;
 use super::event::{Body, Event, NewEvent};
+use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema::{self, IfMissing};
 use crate::electrode::history::{Book, ProbeKind, Tag};
@@ -37,6 +38,8 @@ pub struct Batch {
     pub rows: Vec<(PointId, Reading)>,
     /// Events. A [`Body::ClockStep`] gets the number of this batch's first row.
     pub events: Vec<NewEvent>,
+    /// The newest state of lines; each replaces the one before.
+    pub lines: Vec<LineState>,
 }
 
 /// Which row becomes a point's newest.
@@ -189,6 +192,7 @@ impl Ledger {
                 &batch.events,
                 Newest::LastArrived,
             )?;
+            line_state::replace(&transaction, &path, &batch.lines)?;
             all = Some(Appended {
                 first_seq: all.map_or(one.first_seq, |all| all.first_seq),
                 last_seq: one.last_seq,
