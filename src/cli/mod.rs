@@ -19,6 +19,7 @@ mod health;
 mod hold;
 mod import;
 mod lines;
+mod listen;
 mod log;
 mod lot;
 mod probe;
@@ -90,6 +91,7 @@ enum Command {
     Export(export::Args),
     Import(import::Args),
     Audit(audit::Args),
+    Listen(listen::Args),
     Config(config::Args),
 }
 
@@ -114,6 +116,7 @@ pub fn run() -> ExitCode {
         Command::Export(args) => export::run(&context, args),
         Command::Import(args) => import::run(&context, args),
         Command::Audit(args) => audit::run(&context, args),
+        Command::Listen(args) => listen::run(&context, args),
         Command::Config(args) => config::run(&context, args),
     };
     match ended {

@@ -9,6 +9,7 @@ pub mod checksum;
 pub mod counters;
 pub mod figure;
 pub mod frame;
+pub mod listen;
 pub mod machine;
 pub mod modbus;
 pub mod own_time;

@@ -3,5 +3,6 @@
 #![expect(clippy::unwrap_used, reason = "a test stops where it cannot go on")]
 mod faults;
 mod harness;
+mod listen;
 mod protocols;
 mod unplug;
