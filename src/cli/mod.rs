@@ -19,6 +19,8 @@ mod grab;
 mod health;
 mod hold;
 mod import;
+mod lines;
+mod listen;
 mod log;
 mod lot;
 mod probe;
@@ -90,6 +92,7 @@ enum Command {
     Export(export::Args),
     Import(import::Args),
     Audit(audit::Args),
+    Listen(listen::Args),
     Config(config::Args),
 }
 
@@ -114,6 +117,7 @@ pub fn run() -> ExitCode {
         Command::Export(args) => export::run(&context, args),
         Command::Import(args) => import::run(&context, args),
         Command::Audit(args) => audit::run(&context, args),
+        Command::Listen(args) => listen::run(&context, args),
         Command::Config(args) => config::run(&context, args),
     };
     match ended {

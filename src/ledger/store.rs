@@ -6,6 +6,7 @@ use super::book;
 use super::codec::{Packed, TIME};
 use super::error::LedgerError;
 use super::event::{Body, Event, NewEvent};
+use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema::{self, IfMissing};
 use super::seal::{Cut, Pass};
@@ -52,6 +53,8 @@ pub struct Batch {
     pub rows: Vec<(PointId, Reading)>,
     /// Events. A [`Body::ClockStep`] gets the number of this batch's first row.
     pub events: Vec<NewEvent>,
+    /// The newest state of lines; each replaces the one before.
+    pub lines: Vec<LineState>,
 }
 
 /// Which row becomes a point's newest.
@@ -209,6 +212,7 @@ impl Ledger {
             if batch.events.iter().any(steps) {
                 all.stepped_at = Some(one.first_seq);
             }
+            line_state::replace(&transaction, &path, &batch.lines)?;
         }
         transaction
             .commit()

@@ -89,3 +89,33 @@ fn a_line_that_is_not_there_is_an_event_and_a_row_says_that_nothing_comes() {
             .any(|e| matches!(&e.body, Body::LineLost { line, .. } if line == "line-a"))
     );
 }
+
+#[test]
+fn the_counts_of_a_line_are_shown_beside_the_running_daemon() {
+    let ponds = Ponds::new();
+    let _daemon = ponds.run();
+    let shown = || {
+        let said = ponds.says(&["status", "--lines", "--json"]);
+        let said: serde_json::Value = serde_json::from_slice(&said.stdout).ok()?;
+        let line = said["lines"][0].clone();
+        (line["samples"].as_u64()? >= 5).then_some(line)
+    };
+    // The counts are written when the port opens and every ten seconds from then on.
+    let (line, _) = until("five samples counted", PATIENCE, shown);
+    assert_eq!(
+        (&line["line"], &line["lost"]),
+        (&"line-a".into(), &serde_json::Value::Null)
+    );
+    assert_eq!(line["meters"][0]["meter"], "meter-a");
+    assert_eq!(line["samples"], line["meters"][0]["samples"]);
+    let rejected: u64 = line["rejected"]
+        .as_object()
+        .unwrap()
+        .values()
+        .map(|n| n.as_u64().unwrap())
+        .sum();
+    assert_eq!(
+        line["lines"].as_u64().unwrap(),
+        line["samples"].as_u64().unwrap() + rejected
+    );
+}

@@ -3,5 +3,8 @@
 #![expect(clippy::unwrap_used, reason = "a test stops where it cannot go on")]
 mod faults;
 mod harness;
+mod independent;
+mod listen;
 mod protocols;
+mod storm;
 mod unplug;
