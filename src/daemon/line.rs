@@ -5,6 +5,7 @@
 //! tried again until it is back. 3. Other lines never notice.
 
 use super::backoff::Backoff;
+use super::chain;
 use super::clock;
 use super::hotplug::Hotplug;
 use crate::config::site::{Device, Line, Site};
@@ -380,15 +381,4 @@ fn ms(span: Duration) -> u64 {
 
 fn explained(error: &PortError) -> String {
     format!("{}; {}", chain(error), error.remedy())
-}
-
-/// The error and its causes, outermost first.
-fn chain(error: &dyn std::error::Error) -> String {
-    let mut text = error.to_string();
-    let mut inner = error.source();
-    while let Some(cause) = inner {
-        text = format!("{text}: {cause}");
-        inner = cause.source();
-    }
-    text
 }
