@@ -13,3 +13,4 @@ pub mod meters;
 pub mod pipeline;
 pub mod simulation;
 pub mod watch;
+pub mod water;

@@ -65,7 +65,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
             config::render("demo", &text, &errors)
         ))
     })?;
-    let n_rows = history(&demo, &site, args.days)?;
+    let n_rows = history(&demo, &site, args.days, context.now)?;
     put(&format!(
         "{} days of history, {n_rows} readings. Live now; Ctrl-C ends it.\nFrom a second terminal:\n  export HALFCELL_CONFIG={}\n  halfcell status\n  halfcell calibrate --probe P-2101 --by \"your name\" --buffer phthalate,172.0,20.0 --buffer phosphate,4.0,20.0\n\n",
         args.days,
@@ -111,7 +111,7 @@ fn make_folder(args: &Args, now: Timestamp) -> Result<PathBuf, Failure> {
 }
 
 /// The logbook as events and the meters' memory as readings, by the way every import takes.
-fn history(demo: &DemoSite, site: &Site, days: u32) -> Result<u64, Failure> {
+fn history(demo: &DemoSite, site: &Site, days: u32, now: Timestamp) -> Result<u64, Failure> {
     let mut ledger = Ledger::open(&site.ledger).map_err(|e| ledger_failed(&e))?;
     let mut book = Book::default();
     let logbook = demo
@@ -154,12 +154,19 @@ fn history(demo: &DemoSite, site: &Site, days: u32) -> Result<u64, Failure> {
             read(&site.points[row.point], &standing, &arrival),
         ));
         if rows.len() == CHUNK {
-            kept += ledger.import(&rows).map_err(|e| ledger_failed(&e))?.kept;
+            kept += ledger
+                .import(&rows, now)
+                .map_err(|e| ledger_failed(&e))?
+                .kept;
             bar.set_position(kept);
             rows.clear();
         }
     }
-    kept += ledger.import(&rows).map_err(|e| ledger_failed(&e))?.kept;
+    kept += ledger
+        .import(&rows, now)
+        .map_err(|e| ledger_failed(&e))?
+        .kept;
+    ledger.seal_all(now).map_err(|e| ledger_failed(&e))?;
     bar.finish_and_clear();
     Ok(kept)
 }

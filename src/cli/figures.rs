@@ -3,7 +3,7 @@
 use crate::electrode::history::{ElectrodeLine, ProbeKind, StandardReading};
 use crate::electrode::slope::nernst_slope;
 use crate::electrode::units::{Celsius, Timestamp};
-use comfy_table::{CellAlignment, Table};
+use comfy_table::{CellAlignment, ColumnConstraint, ContentArrangement, Table, Width};
 use std::time::Duration;
 
 /// What stands where there is nothing to say.
@@ -136,15 +136,41 @@ pub(super) fn facts(facts: &[(&str, String)]) -> String {
     lines.concat()
 }
 
+/// How wide the terminal is that reads standard output, if one does.
+pub(super) fn terminal_columns() -> Option<u16> {
+    let size = rustix::termios::tcgetwinsize(std::io::stdout()).ok()?;
+    (size.ws_col > 0).then_some(size.ws_col)
+}
+
 /// A table in the house's look: bare columns, two spaces between; `right` names the columns of figures.
 pub(super) fn table(header: &[&str], rows: Vec<Vec<String>>, right: &[usize]) -> String {
+    let longest_word = |place: usize| {
+        let cells = rows
+            .iter()
+            .filter_map(|row| row.get(place).map(String::as_str));
+        let words = cells
+            .chain(header.get(place).copied())
+            .flat_map(str::split_whitespace);
+        words.map(|word| word.chars().count()).max().unwrap_or(0)
+    };
+    let longest_words: Vec<usize> = (0..header.len()).map(longest_word).collect();
     let mut table = Table::new();
     table.load_style(comfy_table::presets::NOTHING);
     table.set_header(header.iter().copied());
     table.add_rows(rows);
+    // On a terminal narrower than the table, cells break between words inside their column instead of across the line.
+    if let Some(columns) = terminal_columns() {
+        table.set_content_arrangement(ContentArrangement::Dynamic);
+        table.set_width(columns);
+    }
     let last = header.len().saturating_sub(1);
-    for (place, column) in table.column_iter_mut().enumerate() {
-        column.set_padding((0, if place == last { 0 } else { 2 }));
+    for ((place, column), longest_word) in table.column_iter_mut().enumerate().zip(longest_words) {
+        let padding = if place == last { 0 } else { 2 };
+        column.set_padding((0, padding));
+        let narrowest = u16::try_from(longest_word)
+            .unwrap_or(u16::MAX)
+            .saturating_add(padding);
+        column.set_constraint(ColumnConstraint::LowerBoundary(Width::Fixed(narrowest)));
         if right.contains(&place) {
             column.set_cell_alignment(CellAlignment::Right);
         }

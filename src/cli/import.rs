@@ -76,7 +76,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
             None => {}
         }
         if batch.len() == BATCH || done {
-            tally.add(ledger.import(&batch).map_err(failed)?);
+            tally.add(ledger.import(&batch, context.now).map_err(failed)?);
             batch.clear();
             bar.set_position(rows.bytes());
         }
@@ -97,6 +97,7 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
         };
         event = Some(ledger.record(entry.event(body)).map_err(failed)?.id);
     }
+    ledger.seal_all(context.now).map_err(failed)?;
     tell(context, args, &tally, event)
 }
 

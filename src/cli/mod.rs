@@ -10,6 +10,7 @@ mod calibrate;
 mod config;
 mod context;
 mod demo;
+mod derived;
 mod exit;
 mod export;
 mod failure;

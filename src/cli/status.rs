@@ -2,6 +2,7 @@
 
 use super::ahead::{self, Learnt};
 use super::context::{Context, put};
+use super::derived;
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures::{self, NOTHING};
@@ -131,6 +132,9 @@ impl Newest {
     }
 }
 
+/// Columns of a terminal below which the table leaves something out.
+const NARROW: u16 = 110;
+
 /// The status table as text.
 pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<String, LedgerError> {
     let book = reader.book(None)?;
@@ -141,21 +145,38 @@ pub(super) fn table(site: &Site, reader: &Reader, moment: Moment) -> Result<Stri
         site.name,
         time::local_with_zone(at, site.timezone)
     );
-    text.push_str(&figures::table(
-        &[
-            "POINT",
-            "VALUE",
-            "TEMP",
-            "AGE",
-            "BAND",
-            "FLAG",
-            "PROBE",
-            "STATUS",
-            "CALIBRATE BY",
-        ],
-        rows.iter().map(|row| cells(site, row, at)).collect(),
-        &[],
-    ));
+    let mut header = vec![
+        "POINT",
+        "VALUE",
+        "TEMP",
+        "AGE",
+        "BAND",
+        "FLAG",
+        "PROBE",
+        "STATUS",
+        "CALIBRATE BY",
+    ];
+    let mut body: Vec<_> = rows.iter().map(|row| cells(site, row, at)).collect();
+    // What a narrow terminal can spare: the limits stand in the configuration, the temperature in a wider one.
+    if figures::terminal_columns().is_some_and(|columns| columns < NARROW) {
+        for spared in ["BAND", "TEMP"] {
+            if let Some(place) = header.iter().position(|name| *name == spared) {
+                header.remove(place);
+                for cells in &mut body {
+                    cells.remove(place);
+                }
+            }
+        }
+    }
+    text.push_str(&figures::table(&header, body, &[]));
+    let derived: String = rows
+        .iter()
+        .flat_map(|row| row.derived.iter().map(|figure| figure.line(row.point)))
+        .collect();
+    if !derived.is_empty() {
+        text.push('\n');
+        text.push_str(&derived);
+    }
     let reasons: Vec<String> = rows.iter().filter_map(reasons).collect();
     if !reasons.is_empty() {
         text.push('\n');
@@ -180,6 +201,8 @@ struct Row<'a> {
     probe: Option<&'a ProbeHistory>,
     condition: Option<(Status, Vec<String>)>,
     calibrate_by: Option<Timestamp>,
+    /// Ammonia and carbon dioxide, where the water is described; of a fresh reading only.
+    derived: Vec<derived::Figure>,
 }
 
 fn rows<'a>(
@@ -222,6 +245,9 @@ fn rows<'a>(
                 probe,
                 condition,
                 calibrate_by: calibrate_by.map(|when| when.by),
+                derived: reading
+                    .filter(|_| !stale)
+                    .map_or_else(Vec::new, |reading| derived::figures_of(point, &reading)),
             })
         })
         .collect()
@@ -324,6 +350,9 @@ fn object(row: &Row<'_>) -> Value {
         "calibrate_by": row.calibrate_by.map(time::rfc3339_ms),
         "alarm": null,
     });
+    for figure in &row.derived {
+        object[figure.key] = figure.object();
+    }
     if row.point.quantity == ProbeKind::Orp {
         object["eh"] = json!(row.eh.map(|eh| eh.value));
     }

@@ -53,7 +53,7 @@ pub(super) fn take(connection: &Connection, counter: &str, n: i64) -> rusqlite::
         .query_row(params![counter, n], |row| row.get(0))
 }
 
-/// The events after number `after`, in order.
+/// The events after number `after`, in order, without seals: those are many and speak to the audit only.
 pub(super) fn events(
     connection: &Connection,
     path: &Path,
@@ -62,7 +62,7 @@ pub(super) fn events(
     let at = |source| LedgerError::of(path, "read events", source);
     let mut statement = connection
         .prepare_cached(
-            "SELECT id, at_ms, entered_ms, by, body FROM event WHERE id > ? ORDER BY id",
+            "SELECT id, at_ms, entered_ms, by, body FROM event WHERE id > ? AND body NOT GLOB '{\"event\":\"sealed\",*' ORDER BY id",
         )
         .map_err(at)?;
     let mut rows = statement.query([after]).map_err(at)?;

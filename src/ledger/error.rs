@@ -81,6 +81,16 @@ pub enum LedgerError {
         /// What SQLite said.
         source: rusqlite::Error,
     },
+    /// A sealed hour is not what was sealed.
+    #[error("sealed part {id} in ledger {} is damaged: {what}", path.display())]
+    DamagedPart {
+        /// Its number.
+        id: i64,
+        /// The file.
+        path: PathBuf,
+        /// What is wrong with it.
+        what: String,
+    },
     /// The system refused.
     #[error("cannot {doing} for ledger {}", path.display())]
     System {
@@ -135,7 +145,7 @@ impl LedgerError {
             }
             Self::Locked { .. } => "end the process that holds the lock, or try again",
             Self::Full { .. } => "make room on the disk",
-            Self::Database { .. } | Self::UnreadableEvent { .. } => {
+            Self::Database { .. } | Self::UnreadableEvent { .. } | Self::DamagedPart { .. } => {
                 "run `halfcell audit` and restore a backup if it finds damage"
             }
             Self::System { .. } => "check the path and its permissions",

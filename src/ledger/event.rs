@@ -169,6 +169,19 @@ pub enum Body {
         /// Rows with the time of a kept row but other figures: kept too.
         conflicting: u64,
     },
+    /// Readings of a point were sealed: their blob stands in the chain by its hash.
+    Sealed {
+        /// The point.
+        point: Tag,
+        /// Beginning of the hour.
+        hour: Timestamp,
+        /// Which part of the hour.
+        part: i64,
+        /// How many readings.
+        n: u64,
+        /// SHA-256 of the blob, hexadecimal.
+        sha256: String,
+    },
 }
 
 impl Event {
@@ -215,7 +228,8 @@ impl Event {
             | Body::DaemonStopped { .. }
             | Body::ConfigChanged { .. }
             | Body::ReadingsDropped { .. }
-            | Body::Import { .. } => {}
+            | Body::Import { .. }
+            | Body::Sealed { .. } => {}
         }
     }
 }

@@ -7,17 +7,24 @@
 mod audit;
 mod book;
 mod chain;
+mod chart;
+mod chores;
+mod codec;
 mod error;
 pub mod event;
 mod import;
 mod line_state;
 mod reader;
+mod rollup;
 mod row;
+mod rows;
 mod schema;
+mod seal;
 mod store;
 mod writer;
 
 pub use audit::{AuditReport, ChainBreak};
+pub use chart::Bucket;
 pub use error::LedgerError;
 pub use import::Imported;
 pub use line_state::LineState;

@@ -4,19 +4,19 @@
 
 use super::audit::{self, AuditReport};
 use super::book;
+use super::chart::{self, Bucket};
 use super::error::LedgerError;
 use super::event::Event;
 use super::line_state::{self, LineState};
 use super::row::{self, PointId};
+use super::rows::At;
 use super::schema;
 use crate::electrode::history::{Book, EventId, Tag};
 use crate::electrode::units::Timestamp;
 use crate::watch::reading::Reading;
-use rusqlite::{Connection, OptionalExtension, params};
+use rusqlite::{Connection, OptionalExtension};
 use std::ops::ControlFlow;
 use std::path::{Path, PathBuf};
-
-const HOUR_MS: i64 = 3_600_000;
 
 /// The ledger open for reading only.
 #[derive(Debug)]
@@ -101,28 +101,27 @@ impl Reader {
         point: PointId,
         at: Option<Timestamp>,
     ) -> Result<Option<(i64, Reading)>, LedgerError> {
-        let read = || {
-            match at {
+        let row = match at {
+            Some(at) => self.at_point(point).newest(at.ms())?,
             None => self
-                .connection
-                .prepare_cached(concat!("SELECT ", row::columns!(), " FROM point_state WHERE point_id = ?"))?
-                .query_row([point.id], |row| row::read(row, point.kind))
-                .optional(),
-            Some(at) => self
                 .connection
                 .prepare_cached(concat!(
                     "SELECT ",
                     row::columns!(),
-                    " FROM reading WHERE point_id = ? AND t_ms <= ? ORDER BY t_ms DESC, seq DESC LIMIT 1"
-                ))?
-                .query_row([point.id, at.ms()], |row| row::read(row, point.kind))
-                .optional(),
-        }
+                    " FROM point_state WHERE point_id = ?"
+                ))
+                .and_then(|mut statement| {
+                    statement
+                        .query_row([point.id], |row| row::read(row, 0))
+                        .optional()
+                })
+                .map_err(self.at("read the newest reading"))?,
         };
-        read().map_err(self.at("read the newest reading"))
+        Ok(row.map(|row| row::unpack(point.kind, &row)))
     }
 
-    /// Gives `each` the readings of `point` from `from` up to before `to` with their sequence numbers: hour by hour, by sequence within the hour, until it breaks.
+    /// Gives `each` the readings of `point` from `from` up to before `to` with their sequence numbers: by time, then by sequence,
+    /// until it breaks. It is read hour by hour; what arrives after the call began is not seen.
     ///
     /// # Errors
     /// What the database says.
@@ -133,24 +132,10 @@ impl Reader {
         to: Timestamp,
         mut each: impl FnMut(i64, Reading) -> ControlFlow<()>,
     ) -> Result<(), LedgerError> {
-        let mut from_ms = from.ms();
-        while let Some(first) = self
-            .first_at_or_after(point, from_ms)?
-            .filter(|first| *first < to.ms())
-        {
-            let end = first
-                .div_euclid(HOUR_MS)
-                .saturating_add(1)
-                .saturating_mul(HOUR_MS)
-                .min(to.ms());
-            for (seq, reading) in self.span(point, first, end)? {
-                if each(seq, reading).is_break() {
-                    return Ok(());
-                }
-            }
-            from_ms = end;
-        }
-        Ok(())
+        self.at_point(point).walk(&(from.ms()..to.ms()), |row| {
+            let (seq, reading) = row::unpack(point.kind, row);
+            each(seq, reading)
+        })
     }
 
     /// The newest state of every line that a daemon has run, by name.
@@ -161,40 +146,43 @@ impl Reader {
         line_state::all(&self.connection).map_err(self.at("read the state of the lines"))
     }
 
-    /// What is broken in the chain of events and in the database, and where.
+    /// `point` from `from` up to before `to` in `n` buckets of equal length. Buckets of an hour or more are made of whole
+    /// hours, of a minute or more of whole minutes (what touches the span's ends counts whole), shorter ones of the readings.
+    ///
+    /// # Errors
+    /// What the database says.
+    pub fn chart(
+        &self,
+        point: PointId,
+        from: Timestamp,
+        to: Timestamp,
+        n: u32,
+    ) -> Result<Vec<Bucket>, LedgerError> {
+        chart::chart(&self.at_point(point), point.kind, &(from.ms()..to.ms()), n)
+    }
+
+    /// What is broken in the chain of events, in the sealed hours and in the database, and where.
     ///
     /// # Errors
     /// When the database cannot be read at all.
     pub fn audit(&self) -> Result<AuditReport, LedgerError> {
-        audit::audit(&self.connection).map_err(self.at("audit"))
+        self.audit_from(None)
     }
 
-    fn first_at_or_after(&self, point: PointId, t_ms: i64) -> Result<Option<i64>, LedgerError> {
-        self.connection
-            .prepare_cached("SELECT min(t_ms) FROM reading WHERE point_id = ? AND t_ms >= ?")
-            .and_then(|mut statement| statement.query_row([point.id, t_ms], |row| row.get(0)))
-            .map_err(self.at("read readings"))
+    /// As [`Reader::audit`]; `anchor` is a hash printed or mailed earlier: a chain rewritten since then does not hold it.
+    ///
+    /// # Errors
+    /// As [`Reader::audit`].
+    pub fn audit_from(&self, anchor: Option<&str>) -> Result<AuditReport, LedgerError> {
+        audit::audit(&self.connection, &self.path, anchor).map_err(self.at("audit"))
     }
 
-    fn span(
-        &self,
-        point: PointId,
-        from_ms: i64,
-        to_ms: i64,
-    ) -> Result<Vec<(i64, Reading)>, LedgerError> {
-        let read = || -> rusqlite::Result<Vec<(i64, Reading)>> {
-            self.connection
-                .prepare_cached(concat!(
-                    "SELECT ",
-                    row::columns!(),
-                    " FROM reading WHERE point_id = ? AND t_ms >= ? AND t_ms < ? ORDER BY seq"
-                ))?
-                .query_map(params![point.id, from_ms, to_ms], |row| {
-                    row::read(row, point.kind)
-                })?
-                .collect()
-        };
-        read().map_err(self.at("read readings"))
+    fn at_point(&self, point: PointId) -> At<'_> {
+        At {
+            connection: &self.connection,
+            path: &self.path,
+            point: point.id,
+        }
     }
 
     fn at(&self, doing: &'static str) -> impl Fn(rusqlite::Error) -> LedgerError {

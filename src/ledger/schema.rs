@@ -3,14 +3,15 @@
 //! in: a path. out: a connection to a ledger of this version, or why not.
 
 use super::error::LedgerError;
-use rusqlite::{Connection, OpenFlags, TransactionBehavior};
+use rusqlite::{Connection, ErrorCode, OpenFlags, TransactionBehavior};
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 /// The migrations, in order; a ledger's version is how many it has had. Never edited after release.
 const MIGRATIONS: &[&str] = &[
     include_str!("../../migrations/0001-readings-and-events.sql"),
-    include_str!("../../migrations/0002-line-state.sql"),
+    include_str!("../../migrations/0002-sealed-hours.sql"),
+    include_str!("../../migrations/0003-line-state.sql"),
 ];
 
 /// "half" in ASCII, as the first migration sets it.
@@ -49,7 +50,15 @@ pub(super) fn open_writable(path: &Path, if_missing: IfMissing) -> Result<Connec
     connection
         .busy_timeout(BUSY_TIMEOUT)
         .map_err(at("set the timeout"))?;
-    let version = version(&connection, path)?;
+    let version = version(&connection, path).map_err(|error| match error {
+        // The log and its shared memory cannot be made beside the file.
+        LedgerError::Database { path, source, .. }
+            if source.sqlite_error_code() == Some(ErrorCode::CannotOpen) =>
+        {
+            LedgerError::ReadOnly { path, source }
+        }
+        error => error,
+    })?;
     if connection
         .is_readonly("main")
         .map_err(at("ask for permission"))?
@@ -169,19 +178,18 @@ fn version(connection: &Connection, path: &Path) -> Result<i64, LedgerError> {
     Ok(version)
 }
 
-/// Each migration in a transaction of its own; the version is read again inside, for two processes may start at once.
+/// All that is missing in one transaction, so that nobody sees a version in between; the version is read again inside, for
+/// two processes may start at once.
 fn migrate(connection: &mut Connection) -> Result<(), rusqlite::Error> {
+    let transaction = connection.transaction_with_behavior(TransactionBehavior::Immediate)?;
+    let version: i64 = transaction.pragma_query_value(None, "user_version", |row| row.get(0))?;
     for (number, sql) in (1_i64..).zip(MIGRATIONS) {
-        let transaction = connection.transaction_with_behavior(TransactionBehavior::Immediate)?;
-        let version: i64 =
-            transaction.pragma_query_value(None, "user_version", |row| row.get(0))?;
         if version < number {
             transaction.execute_batch(sql)?;
             transaction.pragma_update(None, "user_version", number)?;
         }
-        transaction.commit()?;
     }
-    Ok(())
+    transaction.commit()
 }
 
 /// Write-ahead logging needs shared memory, which network file systems do not give.

@@ -3,17 +3,23 @@
 //! Every write is one `BEGIN IMMEDIATE` transaction: one that reads first and then writes fails beside another writer at once.
 
 use super::book;
+use super::codec::{Packed, TIME};
 use super::error::LedgerError;
 use super::event::{Body, Event, NewEvent};
 use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema::{self, IfMissing};
+use super::seal::{Cut, Pass};
 use crate::electrode::history::{Book, ProbeKind, Tag};
+use crate::electrode::units::Timestamp;
 use crate::watch::reading::Reading;
 use rusqlite::{Connection, OptionalExtension, Transaction, TransactionBehavior, params};
 use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
+
+/// Rows looked at in one transaction of pruning: some milliseconds.
+const PRUNED_AT_ONCE: u32 = 10_000;
 
 /// The ledger open for reading and writing.
 #[derive(Debug)]
@@ -29,6 +35,15 @@ pub struct Appended {
     pub first_seq: i64,
     /// Sequence number of the last row; one below `first_seq` when there was none.
     pub last_seq: i64,
+}
+
+/// What one transaction of the writer brought.
+#[derive(Debug, Clone, Copy, Default)]
+pub(super) struct Committed {
+    /// Sequence number of the last row.
+    pub(super) last_seq: Option<i64>,
+    /// Sequence number of the first row after the last step of the clock.
+    pub(super) stepped_at: Option<i64>,
 }
 
 /// Rows and events that belong into one transaction.
@@ -180,10 +195,10 @@ impl Ledger {
     pub(super) fn append_batches<'a>(
         &mut self,
         batches: impl Iterator<Item = &'a Batch>,
-    ) -> Result<Option<Appended>, LedgerError> {
+    ) -> Result<Committed, LedgerError> {
         let path = self.path.clone();
         let transaction = self.begin()?;
-        let mut all: Option<Appended> = None;
+        let mut all = Committed::default();
         for batch in batches {
             let one = append_to(
                 &transaction,
@@ -193,15 +208,67 @@ impl Ledger {
                 Newest::LastArrived,
             )?;
             line_state::replace(&transaction, &path, &batch.lines)?;
-            all = Some(Appended {
-                first_seq: all.map_or(one.first_seq, |all| all.first_seq),
-                last_seq: one.last_seq,
-            });
+            all.last_seq = Some(one.last_seq);
+            let steps = |event: &NewEvent| matches!(event.body, Body::ClockStep { .. });
+            if batch.events.iter().any(steps) {
+                all.stepped_at = Some(one.first_seq);
+            }
         }
         transaction
             .commit()
             .map_err(|source| LedgerError::of(&path, "commit readings", source))?;
         Ok(all)
+    }
+
+    /// Seals every row there is, whatever its hour: the hour that is open gets another part later. `now` is when it is done.
+    ///
+    /// # Errors
+    /// What the database says; what was sealed before stays sealed.
+    pub fn seal_all(&mut self, now: Timestamp) -> Result<(), LedgerError> {
+        self.seal(Cut::All, now)
+    }
+
+    /// Seals the rows of each point up to its last one before `cut`.
+    ///
+    /// # Errors
+    /// As [`Ledger::seal_all`].
+    pub fn seal_before(&mut self, cut: Timestamp, now: Timestamp) -> Result<(), LedgerError> {
+        self.seal(Cut::Before(cut), now)
+    }
+
+    pub(super) fn seal(&mut self, cut: Cut, now: Timestamp) -> Result<(), LedgerError> {
+        let mut pass = Pass::new(cut, now);
+        while self.seal_some(&mut pass)? {}
+        Ok(())
+    }
+
+    /// A little of a pass; whether there is more to do.
+    pub(super) fn seal_some(&mut self, pass: &mut Pass) -> Result<bool, LedgerError> {
+        pass.step(&mut self.connection, &self.path)
+    }
+
+    /// Deletes sealed rows earlier than `before` from the front of the arrival table, some thousands at a time; whether there may be more.
+    ///
+    /// # Errors
+    /// What the database says; nothing is deleted then.
+    pub fn prune_some(&mut self, before: Timestamp) -> Result<bool, LedgerError> {
+        let path = self.path.clone();
+        let transaction = self.begin()?;
+        let n = transaction
+            .prepare_cached(
+                "DELETE FROM reading WHERE seq IN (
+                   SELECT seq FROM (
+                     SELECT seq, t_ms FROM reading
+                     WHERE seq <= coalesce(
+                       (SELECT min(sealed_to) FROM point_state WHERE t_open IS NOT NULL),
+                       (SELECT next - 1 FROM counter WHERE name = 'reading'))
+                     ORDER BY seq LIMIT ?2)
+                   WHERE t_ms < ?1)",
+            )
+            .and_then(|mut statement| statement.execute(params![before.ms(), PRUNED_AT_ONCE]))
+            .and_then(|n| transaction.commit().map(|()| n))
+            .map_err(|source| LedgerError::of(&path, "prune sealed readings", source))?;
+        Ok(u32::try_from(n) == Ok(PRUNED_AT_ONCE))
     }
 
     /// How long to wait for another process's lock.
@@ -262,37 +329,71 @@ fn insert_rows(
 ) -> rusqlite::Result<Appended> {
     let n = i64::try_from(rows.len()).unwrap_or(i64::MAX);
     let first_seq = book::take(transaction, "reading", n)?;
-    let mut states: BTreeMap<PointId, (i64, &Reading)> = BTreeMap::new();
+    let mut states: BTreeMap<PointId, State> = BTreeMap::new();
     let mut insert = transaction.prepare_cached(concat!(
         "INSERT INTO reading(point_id, ",
         row::columns!(),
         ") VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?)"
     ))?;
     for (seq, (point, reading)) in (first_seq..).zip(rows) {
-        row::bind(&mut insert, *point, seq, reading)?;
-        let state = states.entry(*point).or_insert((seq, reading));
-        if newest == Newest::LastArrived || reading.at >= state.1.at {
-            *state = (seq, reading);
+        let packed = row::pack(point.kind, seq, reading);
+        row::bind(&mut insert, point.id, &packed)?;
+        let t_ms = packed[TIME];
+        let state = states.entry(*point).or_insert(State {
+            first_seq: seq,
+            t_lo: t_ms,
+            t_hi: t_ms,
+            newest: packed,
+        });
+        state.t_lo = state.t_lo.min(t_ms);
+        state.t_hi = state.t_hi.max(t_ms);
+        if newest == Newest::LastArrived || t_ms >= state.newest[TIME] {
+            state.newest = packed;
         }
     }
-    let mut upsert = transaction.prepare_cached(match newest {
-        Newest::LastArrived => concat!(
-            "INSERT OR REPLACE INTO point_state(point_id, ",
-            row::columns!(),
-            ") VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?)"
-        ),
-        Newest::LastInTime => concat!(
-            "INSERT OR REPLACE INTO point_state(point_id, ",
-            row::columns!(),
-            ") SELECT ?1, ?2, ?3, ?4, ?5, ?6, ?7, ?8, ?9
-               WHERE NOT EXISTS (SELECT 1 FROM point_state WHERE point_id = ?1 AND t_ms > ?3)"
-        ),
-    })?;
-    for (point, (seq, reading)) in states {
-        row::bind(&mut upsert, point, seq, reading)?;
+    let mut take_up = transaction.prepare_cached(concat!(
+        "INSERT INTO point_state(point_id, ",
+        row::columns!(),
+        ") VALUES (?1, ?2, ?3, ?4, ?5, ?6, ?7, ?8, ?9) ON CONFLICT(point_id) DO UPDATE SET
+           (seq, t_ms, mv_uv, temp_mc, value_u, u_u, calibration_id, flags) = (?2, ?3, ?4, ?5, ?6, ?7, ?8, ?9)"
+    ))?;
+    let mut span = transaction.prepare_cached(
+        "UPDATE point_state SET
+           sealed_to = CASE WHEN t_open IS NULL THEN max(sealed_to, ?2) ELSE sealed_to END,
+           t_max = max(coalesce(t_max, ?4), ?4),
+           t_open = min(coalesce(t_open, ?3), ?3)
+         WHERE point_id = ?1",
+    )?;
+    let mut t_newest =
+        transaction.prepare_cached("SELECT t_ms FROM point_state WHERE point_id = ?")?;
+    for (point, state) in states {
+        let is_newest = newest == Newest::LastArrived || {
+            let before: Option<i64> = t_newest
+                .query_row([point.id], |row| row.get(0))
+                .optional()?;
+            before.is_none_or(|before| state.newest[TIME] >= before)
+        };
+        if is_newest {
+            row::bind(&mut take_up, point.id, &state.newest)?;
+        }
+        // Nothing of the point waits in front of its first row here: what is sealed reaches up to it.
+        span.execute(params![
+            point.id,
+            state.first_seq - 1,
+            state.t_lo,
+            state.t_hi
+        ])?;
     }
     Ok(Appended {
         first_seq,
         last_seq: first_seq.saturating_add(n) - 1,
     })
+}
+
+/// What a transaction brings of one point.
+struct State {
+    first_seq: i64,
+    t_lo: i64,
+    t_hi: i64,
+    newest: Packed,
 }

@@ -6,6 +6,7 @@
 //! Not here: the clock; it comes in as [`Clock`].
 
 use super::book;
+use super::chores::Chores;
 use super::error::LedgerError;
 use super::event::{Body, NewEvent};
 use super::schema;
@@ -20,6 +21,9 @@ use tokio::sync::watch;
 
 /// How long readings wait for a ledger that cannot be written before the oldest are dropped.
 pub const LONGEST_WAIT: Duration = Duration::from_hours(1);
+
+/// How often the hour is looked at when nothing arrives.
+const LOOK_AROUND: Duration = Duration::from_mins(1);
 
 /// The clocks, as functions.
 #[derive(Debug, Clone, Copy)]
@@ -117,6 +121,7 @@ impl Writer {
             window,
             shared: Arc::clone(&shared),
             publish,
+            chores: Chores::default(),
         };
         let thread = std::thread::Builder::new()
             .name("ledger".to_owned())
@@ -226,41 +231,47 @@ struct Task {
     window: Duration,
     shared: Arc<Shared>,
     publish: watch::Sender<WriterStatus>,
+    chores: Chores,
 }
 
 impl Task {
     fn run(mut self) {
         let mut next = (self.shared.clock.instant)();
         loop {
-            let (work, dropped, stopping) = self.wait(next);
-            next = (self.shared.clock.instant)() + self.window;
+            let is_idle = self.chores.are_done((self.shared.clock.now)());
+            let (work, dropped, stopping) = self.wait(next, is_idle);
             if !work.is_empty() {
+                next = (self.shared.clock.instant)() + self.window;
                 self.commit(work, dropped);
             }
             if stopping {
                 return;
             }
+            if let Some(ledger) = &mut self.ledger {
+                self.chores.do_some(ledger, (self.shared.clock.now)());
+            }
         }
     }
 
-    /// Waits for something to commit and for the window's end; stopping ends both.
-    fn wait(&self, next: Instant) -> (VecDeque<Waiting>, Option<Dropped>, bool) {
+    /// Waits for something to commit and for the window's end; stopping and chores end both.
+    fn wait(&self, next: Instant, is_idle: bool) -> (VecDeque<Waiting>, Option<Dropped>, bool) {
         let mut queue = self.shared.lock();
+        let mut is_over = !is_idle;
         loop {
             let left = next.saturating_duration_since((self.shared.clock.instant)());
             if queue.stopping || (!queue.waiting.is_empty() && left.is_zero()) {
                 let work = std::mem::take(&mut queue.waiting);
                 return (work, queue.dropped.take(), queue.stopping);
             }
-            queue = if queue.waiting.is_empty() {
-                self.shared
-                    .changed
-                    .wait(queue)
-                    .unwrap_or_else(PoisonError::into_inner)
-            } else {
-                let waited = self.shared.changed.wait_timeout(queue, left);
-                waited.unwrap_or_else(PoisonError::into_inner).0
-            };
+            if is_over {
+                return (VecDeque::new(), None, false);
+            }
+            let is_empty = queue.waiting.is_empty();
+            let limit = if is_empty { LOOK_AROUND } else { left };
+            let waited = self.shared.changed.wait_timeout(queue, limit);
+            let (locked, timeout) = waited.unwrap_or_else(PoisonError::into_inner);
+            queue = locked;
+            is_over = is_empty && timeout.timed_out();
         }
     }
 
@@ -294,11 +305,14 @@ impl Task {
         };
         match tried {
             Ok(appended) => {
+                if let Some(seq) = appended.stepped_at {
+                    self.chores.clock_stepped(seq, now);
+                }
                 let committed = work.back().map_or(0, |last| last.ticket);
                 let queue = self.shared.lock();
                 self.publish.send_modify(|status| {
                     status.committed = committed;
-                    status.last_seq = appended.map_or(status.last_seq, |a| a.last_seq);
+                    status.last_seq = appended.last_seq.unwrap_or(status.last_seq);
                     status.n_waiting = queue.waiting.len();
                     status.n_dropped = queue.n_dropped;
                     status.trouble = None;

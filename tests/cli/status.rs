@@ -89,9 +89,9 @@ fn the_table_shows_value_and_u_and_calls_an_old_value_stale() {
 Sable Creek Hatchery, 2026-03-02 09:14 AST
 
 POINT   VALUE                         TEMP     AGE  BAND           FLAG                   PROBE     STATUS  CALIBRATE BY
-POND-3  7.00 ± 0.05 pH                25.0 °C  2 s  6.8 to 8.6 pH  pass                   P-1042    good    2026-03-10
+POND-3  7.00 ± 0.05 pH                25.0 °C  2 s  6.8 to 8.6 pH  pass                   P-1042    good    2026-03-11
 POND-4  no value                      20.0 °C  2 s  -              fail (no-calibration)  no probe  -       -
-BASIN   650 ± 11 mV (Eh 863 ± 12 mV)  20.0 °C  2 s  -              pass                   R-7       good    2026-03-09
+BASIN   650 ± 11 mV (Eh 863 ± 12 mV)  20.0 °C  2 s  -              pass                   R-7       good    2026-03-11
 "
     );
     let stale = site.done("status --at '2026-03-02 09:15:02'");
@@ -166,8 +166,8 @@ fn health_tells_slope_offset_and_age_with_their_limits_and_why_not_good() {
   slope         100.0 ± 1.0 % (59.2 ± 0.6 mV/pH at 25 °C), good within 90 to 103 %
   offset        0.0 ± 1.7 mV, good within ±30 mV
   calibrated    23 h ago, 2026-03-01 10:00 (calibration 5, by oake)
-  thought now   slope 100.0 ± 1.0 % (59.1 ± 0.6 mV/pH at 25 °C), offset 0.0 ± 2.6 mV, drifting +0.00 mV a day (from 1 visit)
-  calibrate by  2026-03-10 (between 2026-03-07 and 2027-03-10 the error passes the tolerance); its uncertainty reaches the tolerance then
+  thought now   slope 100.0 ± 1.0 % (59.1 ± 0.6 mV/pH at 25 °C), offset 0.0 ± 2.4 mV, drifting +0.00 mV a day (from 1 visit)
+  calibrate by  2026-03-11 (between 2026-03-09 and 2027-04-07 the error passes the tolerance); its uncertainty reaches the tolerance then
 "
     );
 }

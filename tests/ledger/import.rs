@@ -1,6 +1,6 @@
 //! Imported rows are kept once.
 
-use super::{all, fresh, reading};
+use super::{NOW, all, fresh, reading};
 use halfcell::ledger::{Imported, Reader};
 
 #[test]
@@ -11,7 +11,7 @@ fn the_same_import_twice_gives_the_same_ledger() {
         .map(|n| (f.point, reading(n * 7_919 % 50_021 * 1_000, 0.1)))
         .collect();
     assert_eq!(
-        f.ledger.import(&rows).unwrap(),
+        f.ledger.import(&rows, NOW).unwrap(),
         Imported {
             kept: 50_000,
             repeated: 0,
@@ -20,7 +20,7 @@ fn the_same_import_twice_gives_the_same_ledger() {
     );
     let once = all(&f.path, f.point);
     assert_eq!(
-        f.ledger.import(&rows).unwrap(),
+        f.ledger.import(&rows, NOW).unwrap(),
         Imported {
             kept: 0,
             repeated: 50_000,
@@ -41,7 +41,7 @@ fn repeated_and_conflicting_rows_of_one_file_are_told_apart() {
         (f.point, reading(1_000, 2.0)),
     ];
     assert_eq!(
-        f.ledger.import(&rows).unwrap(),
+        f.ledger.import(&rows, NOW).unwrap(),
         Imported {
             kept: 2,
             repeated: 2,
@@ -50,7 +50,7 @@ fn repeated_and_conflicting_rows_of_one_file_are_told_apart() {
     );
     let later = [(f.point, reading(1_000, 3.0))];
     assert_eq!(
-        f.ledger.import(&later).unwrap(),
+        f.ledger.import(&later, NOW).unwrap(),
         Imported {
             kept: 1,
             repeated: 0,
@@ -65,7 +65,9 @@ fn backfill_does_not_hide_the_newest_reading() {
     f.ledger
         .append(&[(f.point, reading(5_000, 1.0))], &[])
         .unwrap();
-    f.ledger.import(&[(f.point, reading(1_000, 2.0))]).unwrap();
+    f.ledger
+        .import(&[(f.point, reading(1_000, 2.0))], NOW)
+        .unwrap();
     let newest = || {
         Reader::open(&f.path)
             .unwrap()
@@ -75,6 +77,8 @@ fn backfill_does_not_hide_the_newest_reading() {
             .0
     };
     assert_eq!(newest(), 1);
-    f.ledger.import(&[(f.point, reading(6_000, 2.0))]).unwrap();
+    f.ledger
+        .import(&[(f.point, reading(6_000, 2.0))], NOW)
+        .unwrap();
     assert_eq!(newest(), 3);
 }

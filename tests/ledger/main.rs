@@ -10,6 +10,10 @@ mod chain;
 mod import;
 mod kept;
 mod killed;
+mod model;
+mod sealed;
+mod trouble;
+mod upgraded;
 mod writer;
 
 use halfcell::electrode::history::{EventId, ProbeId, ProbeKind, ProbeSpec, Tag};
@@ -22,9 +26,12 @@ use halfcell::watch::reading::{Reading, TemperatureSource};
 use std::ops::ControlFlow;
 use std::path::PathBuf;
 
+/// When the tests are.
+const NOW: Timestamp = Timestamp::from_ms(1_800_000_000_000);
+
 /// A fresh ledger in a folder of its own.
 struct Fresh {
-    _folder: tempfile::TempDir,
+    folder: tempfile::TempDir,
     path: PathBuf,
     ledger: Ledger,
     point: PointId,
@@ -36,7 +43,7 @@ fn fresh() -> Fresh {
     let mut ledger = Ledger::open(&path).unwrap();
     let point = ledger.point(&Tag::from("POND-3"), ProbeKind::Ph).unwrap();
     Fresh {
-        _folder: folder,
+        folder,
         path,
         ledger,
         point,

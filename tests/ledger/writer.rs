@@ -13,7 +13,7 @@ pub(super) const CLOCK: Clock = Clock {
 };
 
 /// Waits for a state of the writer, ten seconds at most.
-fn wait_until(
+pub(super) fn wait_until(
     status: &mut Receiver<WriterStatus>,
     reached: impl FnMut(&WriterStatus) -> bool,
 ) -> WriterStatus {
