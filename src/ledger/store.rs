@@ -207,12 +207,12 @@ impl Ledger {
                 &batch.events,
                 Newest::LastArrived,
             )?;
+            line_state::replace(&transaction, &path, &batch.lines)?;
             all.last_seq = Some(one.last_seq);
             let steps = |event: &NewEvent| matches!(event.body, Body::ClockStep { .. });
             if batch.events.iter().any(steps) {
                 all.stepped_at = Some(one.first_seq);
             }
-            line_state::replace(&transaction, &path, &batch.lines)?;
         }
         transaction
             .commit()
