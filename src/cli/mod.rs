@@ -6,6 +6,7 @@
 
 mod ahead;
 mod audit;
+mod backup;
 mod calibrate;
 mod config;
 mod context;
@@ -24,6 +25,7 @@ mod lot;
 mod probe;
 mod rows;
 mod run;
+mod salvage;
 mod standards;
 mod status;
 mod typed;
@@ -90,6 +92,8 @@ enum Command {
     Export(export::Args),
     Import(import::Args),
     Audit(audit::Args),
+    Backup(backup::Args),
+    Salvage(salvage::Args),
     Config(config::Args),
 }
 
@@ -114,6 +118,8 @@ pub fn run() -> ExitCode {
         Command::Export(args) => export::run(&context, args),
         Command::Import(args) => import::run(&context, args),
         Command::Audit(args) => audit::run(&context, args),
+        Command::Backup(args) => backup::run(&context, args),
+        Command::Salvage(args) => salvage::run(&context, args),
         Command::Config(args) => config::run(&context, args),
     };
     match ended {
