@@ -6,6 +6,7 @@
 
 mod ahead;
 mod audit;
+mod backup;
 mod calibrate;
 mod config;
 mod context;
@@ -26,6 +27,7 @@ mod lot;
 mod probe;
 mod rows;
 mod run;
+mod salvage;
 mod standards;
 mod status;
 mod typed;
@@ -93,6 +95,8 @@ enum Command {
     Import(import::Args),
     Audit(audit::Args),
     Listen(listen::Args),
+    Backup(backup::Args),
+    Salvage(salvage::Args),
     Config(config::Args),
 }
 
@@ -118,6 +122,8 @@ pub fn run() -> ExitCode {
         Command::Import(args) => import::run(&context, args),
         Command::Audit(args) => audit::run(&context, args),
         Command::Listen(args) => listen::run(&context, args),
+        Command::Backup(args) => backup::run(&context, args),
+        Command::Salvage(args) => salvage::run(&context, args),
         Command::Config(args) => config::run(&context, args),
     };
     match ended {

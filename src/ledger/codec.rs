@@ -266,6 +266,28 @@ mod tests {
         ]
     }
 
+    #[test]
+    fn the_worked_example_of_the_documentation_is_what_is_written() {
+        let mut rows = Rows::default();
+        for (seq, t_ms, mv, temp_c, value) in [
+            (41, 1_772_457_240_000, -177_480, 25_000, 71_234),
+            (49, 1_772_457_241_000, -177_480, NONE, 71_230),
+            (57, 1_772_457_242_003, -177_300, 25_000, 71_234),
+        ] {
+            rows.push(&[seq, t_ms, mv, temp_c, value, NONE, 3, 17]);
+        }
+        let plain = zstd::bulk::decompress(&encode(&rows).unwrap(), 1_000).unwrap();
+        let hex: Vec<String> = plain.iter().map(|byte| format!("{byte:02x}")).collect();
+        let text = include_str!("../../DEVELOPERS.md");
+        let (_, example) = text.split_once("```codec-1\n").unwrap();
+        let (example, _) = example.split_once("```").unwrap();
+        let written: Vec<&str> = example
+            .lines()
+            .flat_map(|line| line.split("  ").next().unwrap_or("").split_whitespace())
+            .collect();
+        assert_eq!(written, hex);
+    }
+
     proptest! {
         #[test]
         fn any_rows_come_back_as_they_were(given in prop::collection::vec(prop::array::uniform8(figure()), 1..200)) {

@@ -13,6 +13,12 @@ pub enum LedgerError {
         /// Where it was looked for.
         path: PathBuf,
     },
+    /// A file is there already.
+    #[error("{} is there already", path.display())]
+    Exists {
+        /// The file.
+        path: PathBuf,
+    },
     /// The file is another program's, or no database.
     #[error("{} is not a ledger", path.display())]
     NotALedger {
@@ -134,6 +140,7 @@ impl LedgerError {
             Self::Missing { .. } => {
                 "start the daemon once, or name the ledger with `--ledger FILE`"
             }
+            Self::Exists { .. } => "name a file that is not there yet",
             Self::NotALedger { .. } => "name another file with `--ledger FILE`",
             Self::Newer { .. } => "install the version of halfcell that wrote it, or a newer one",
             Self::Older { .. } => "start the daemon once to bring the ledger up to this version",

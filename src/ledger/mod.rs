@@ -5,6 +5,7 @@
 //! changed. 4. acknowledged means synced. Not here: what a reading means (`pipeline`), the time of day (`daemon`).
 
 mod audit;
+mod backup;
 mod book;
 mod chain;
 mod chart;
@@ -18,17 +19,20 @@ mod reader;
 mod rollup;
 mod row;
 mod rows;
+mod salvage;
 mod schema;
 mod seal;
 mod store;
 mod writer;
 
 pub use audit::{AuditReport, ChainBreak};
+pub use backup::backup;
 pub use chart::Bucket;
 pub use error::LedgerError;
 pub use import::Imported;
 pub use line_state::LineState;
 pub use reader::Reader;
 pub use row::PointId;
+pub use salvage::{Salvaged, salvage};
 pub use store::{Appended, Batch, Ledger};
 pub use writer::{Clock, LONGEST_WAIT, Trouble, Writer, WriterStatus};

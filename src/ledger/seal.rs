@@ -396,6 +396,33 @@ fn insert(
     })
 }
 
+/// Seals `rows` of a point once more as the next part of their hour; the caller holds the transaction.
+pub(super) fn seal_again(
+    transaction: &Transaction<'_>,
+    path: &Path,
+    tag: &Tag,
+    rows: &Rows,
+    entered: Timestamp,
+) -> Result<(), LedgerError> {
+    let at = |source| LedgerError::of(path, "seal readings", source);
+    let id = transaction
+        .query_row("SELECT id FROM point WHERE tag = ?", [&tag.0], |row| {
+            row.get(0)
+        })
+        .map_err(at)?;
+    let point = Open {
+        id,
+        tag: tag.clone(),
+        sealed_to: 0,
+    };
+    let packed: Vec<Packed> = rows.iter().collect();
+    for part in parts(&packed, path)? {
+        let event = insert(transaction, &point, &part, entered).map_err(at)?;
+        book::append(transaction, path, &event)?;
+    }
+    Ok(())
+}
+
 /// Lower-case hexadecimal.
 pub(super) fn hex(bytes: &[u8]) -> String {
     bytes.iter().fold(String::new(), |mut text, byte| {

@@ -7,6 +7,7 @@
 
 mod broken;
 mod chain;
+mod copies;
 mod import;
 mod kept;
 mod killed;

@@ -282,3 +282,55 @@ fn the_audit_says_which_sealed_hour_was_changed_or_removed_and_holds_an_anchor()
         ]
     );
 }
+
+#[test]
+fn a_script_written_from_the_documentation_alone_reads_sealed_hours() {
+    let has = |program: &str| {
+        std::process::Command::new(program)
+            .arg("--version")
+            .output()
+            .is_ok()
+    };
+    if !has("python3") || !has("zstd") {
+        println!("python3 or zstd is missing: the layout was not read by another program");
+        return;
+    }
+    let mut f = fresh();
+    let rows: Vec<_> = (0..5_000_i32)
+        .map(|n| {
+            let row = Reading {
+                mv: (n % 13 != 0).then(|| -177.0 + f64::from(n % 41) / 10.0),
+                value: None,
+                u: (n > 4_000).then_some(0.03),
+                calibration: (n % 2 == 0).then_some(i64::from(n / 1_000)),
+                ..reading(i64::from(n) * 1_000 + i64::from(n % 5), 0.0)
+            };
+            (f.point, row)
+        })
+        .collect();
+    f.ledger.append(&rows, &[]).unwrap();
+    f.ledger.seal_all(NOW).unwrap();
+    let script = concat!(env!("CARGO_MANIFEST_DIR"), "/tests/ledger/read_sealed.py");
+    let read = std::process::Command::new("python3")
+        .args([script.as_ref(), f.path.as_os_str(), "1".as_ref()])
+        .output()
+        .unwrap();
+    assert!(
+        read.status.success(),
+        "{}",
+        String::from_utf8_lossy(&read.stderr)
+    );
+    let read = String::from_utf8(read.stdout).unwrap();
+    let expected: Vec<String> = Connection::open(&f.path)
+        .unwrap()
+        .prepare(
+            "SELECT concat_ws(',', seq, t_ms, ifnull(mv_uv, ''), ifnull(temp_mc, ''), ifnull(value_u, ''), ifnull(u_u, ''),
+               ifnull(calibration_id, ''), flags) FROM reading ORDER BY t_ms / 3600000, seq",
+        )
+        .unwrap()
+        .query_map([], |row| row.get(0))
+        .unwrap()
+        .map(Result::unwrap)
+        .collect();
+    assert_eq!(read.lines().collect::<Vec<_>>(), expected);
+}
