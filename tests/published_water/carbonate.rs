@@ -37,7 +37,7 @@ fn check(method: &str, scale: &str, n: usize, fraction: f64) {
 #[test]
 fn fresh_water_by_a_speciation_program_with_the_same_activities() {
     // Source: PHREEQC 3 through phreeqpython 1.6.2 with Davies activities and Plummer & Busenberg 1982.
-    check("plummer_busenberg_davies", "activity", 24, 1e-3);
+    check("plummer_busenberg_davies", "activity", 24, 3e-4);
 }
 
 #[test]
@@ -67,7 +67,7 @@ fn hard_water_with_ion_pairs_is_within_what_is_stated() {
 fn sea_water_by_lueker_2000() {
     // Source: PyCO2SYS 1.8.3.4, constants of Lueker et al. 2000, pH on the NBS scale. Rows on the total scale are for other users: a
     // probe calibrated in ordinary buffers has no pH on that scale.
-    check("lueker_2000", "NBS", 6, 1e-3);
+    check("lueker_2000", "NBS", 6, 4e-5);
 }
 
 #[test]
@@ -88,7 +88,7 @@ fn brackish_water_by_millero_2010() {
         let alkalinity = figure(row, "alkalinity_meq_per_kg") * density_kg_l(row);
         let got = free_co2_mg_l(&exact(ph, temp_c, s), (alkalinity, 0.0)).unwrap();
         // From salinity 19 on the program takes Lueker's constants, which part from Millero's by up to 2 %.
-        let fraction = if s >= 19.0 { 0.02 } else { 1e-3 };
+        let fraction = if s >= 19.0 { 0.02 } else { 4e-5 };
         assert_within(
             &row["id"],
             got.figure.value,

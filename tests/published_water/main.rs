@@ -8,6 +8,7 @@
 
 mod ammonia;
 mod carbonate;
+mod edges;
 mod laws;
 mod water;
 
