@@ -1,6 +1,6 @@
 //! A Modbus slave that spoils one answer. Whatever it does, no wrong value is taken and the next questions are answered.
 
-use crate::harness::{MS, Peer, Running, Said, line, meter, numbers, run, site};
+use crate::harness::{MS, Peer, Running, Said, alone, line, meter, numbers, run, site};
 use halfcell::config::site::{Protocol, Source};
 use halfcell::daemon::line::FromLine;
 use halfcell::meters::checksum::crc16_modbus;
@@ -85,6 +85,7 @@ async fn check(fault: &str, spoiled: Spoiled, spoil: impl Fn(u8, &[u8]) -> Said 
 
 #[test]
 fn no_fault_of_the_table_gives_a_wrong_value_or_costs_more_than_its_own_poll() {
+    let _alone = alone();
     run(async {
         let all = LocalSet::new();
         let rows = [
@@ -167,6 +168,7 @@ fn no_fault_of_the_table_gives_a_wrong_value_or_costs_more_than_its_own_poll() {
 
 #[test]
 fn an_exception_is_shown_by_its_name_and_a_dead_unit_does_not_starve_the_others() {
+    let _alone = alone();
     run(async {
         let peer = Peer::start(|heard| match heard {
             [1, 4, ..] if heard.len() == 8 => at_once(crc(vec![1, 0x84, 2])),

@@ -129,6 +129,14 @@ fn talk(
     }
 }
 
+/// One at a time: tests that keep the machine busy, and tests whose peer must answer within milliseconds.
+pub(crate) fn alone() -> std::sync::MutexGuard<'static, ()> {
+    static ALONE: std::sync::Mutex<()> = std::sync::Mutex::new(());
+    ALONE
+        .lock()
+        .unwrap_or_else(std::sync::PoisonError::into_inner)
+}
+
 pub(crate) const MS: Duration = Duration::from_millis(1);
 
 pub(crate) fn line(path: &Path, protocol: Protocol) -> Line {

@@ -3,7 +3,7 @@
 //! The wire between is ours: it keeps what is meant for unit 8 from the server (which would answer for an absent unit too), and puts
 //! noise between the frames around unit 7.
 
-use crate::harness::{MS, Running, line, meter, numbers, run, site};
+use crate::harness::{MS, Running, alone, line, meter, numbers, run, site};
 use halfcell::config::site::{Protocol, Source};
 use halfcell::daemon::clock::instant;
 use halfcell::daemon::line::FromLine;
@@ -188,6 +188,7 @@ fn five_healthy_units_beside_a_dead_a_refusing_and_a_noisy_one_lose_no_poll() {
         writeln!(std::io::stderr(), "{warning}").unwrap();
         return;
     }
+    let _alone = alone();
     run(async {
         let mut wire = Wire::start();
         let _server = Server::start(&wire.theirs);
@@ -195,7 +196,7 @@ fn five_healthy_units_beside_a_dead_a_refusing_and_a_noisy_one_lose_no_poll() {
         let source = |unit| Source::Modbus {
             unit,
             every: EVERY,
-            timeout: 50 * MS,
+            timeout: 90 * MS,
         };
         let meters = (1..=8_u8)
             .map(|unit| meter(&format!("unit-{unit}"), 0, source(unit)))

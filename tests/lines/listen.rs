@@ -1,6 +1,7 @@
 //! `listen` beside twenty meters whose formats are invented here. Each reads the rate that was set and says what a wrong rate makes of
 //! its bytes until it is right.
 
+use crate::harness::alone;
 use halfcell::config::site::{Site, Source};
 use halfcell::meters::sample::Figure;
 use halfcell::meters::text::TextDecoder;
@@ -407,6 +408,7 @@ fn right(truth: &Truth, said: Said, answer: &Value) -> Result<(), String> {
 
 #[test]
 fn twenty_meters_are_found_or_said_to_be_beyond_telling_and_none_is_guessed_wrongly() {
+    let _alone = alone();
     let found: Vec<_> = std::thread::scope(|scope| {
         let meters: Vec<_> = METERS
             .iter()

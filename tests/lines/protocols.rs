@@ -1,6 +1,6 @@
 //! The three protocols, each from the wire to the sample.
 
-use crate::harness::{MS, Peer, Running, line, meter, numbers, run, site, text};
+use crate::harness::{MS, Peer, Running, alone, line, meter, numbers, run, site, text};
 use halfcell::config::site::{Protocol, Source};
 use halfcell::daemon::line::FromLine;
 use halfcell::meters::checksum::crc16_modbus;
@@ -66,6 +66,7 @@ fn a_talker_is_heard_through_junk_and_nothing_is_invented() {
 
 #[test]
 fn two_meters_on_one_line_answer_each_its_own_question_and_the_echo_is_none() {
+    let _alone = alone();
     run(async {
         let peer = Peer::start(|heard| match heard {
             b"A?\r" => vec![
@@ -104,6 +105,7 @@ fn two_meters_on_one_line_answer_each_its_own_question_and_the_echo_is_none() {
 
 #[test]
 fn a_late_text_answer_is_credited_to_nobody() {
+    let _alone = alone();
     run(async {
         let mut asked = 0;
         let peer = Peer::start(move |heard| {

@@ -2,7 +2,7 @@
 //!
 //! Ten seconds here; `HALFCELL_STORM_SECONDS=60` makes it a minute.
 
-use crate::harness::{line, meter, numbers, run, site, text};
+use crate::harness::{alone, line, meter, numbers, run, site, text};
 use halfcell::config::site::{Protocol, Site, Source};
 use halfcell::daemon::clock::instant;
 use halfcell::daemon::line::{FromLine, run_line};
@@ -204,6 +204,7 @@ fn site_below(folder: &Path) -> Arc<Site> {
 
 #[test]
 fn a_storm_on_sixty_four_lines_loses_no_line_and_invents_none() {
+    let _alone = alone();
     let seconds = std::env::var("HALFCELL_STORM_SECONDS");
     let seconds = seconds.map_or(10, |text| text.parse().unwrap());
     let folder = tempfile::tempdir().unwrap();
