@@ -129,17 +129,7 @@ impl fmt::Display for Failure {
 
 impl Error for Failure {}
 
-/// An error with all its causes, outermost first, each once.
-pub(super) fn chain(error: &dyn Error) -> String {
-    let mut text = error.to_string();
-    let mut cause = error.source();
-    while let Some(inner) = cause {
-        text.push_str(": ");
-        text.push_str(&inner.to_string());
-        cause = inner.source();
-    }
-    text
-}
+pub(super) use crate::daemon::chain;
 
 #[cfg(test)]
 mod tests {

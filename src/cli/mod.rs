@@ -20,6 +20,8 @@ mod grab;
 mod health;
 mod hold;
 mod import;
+mod lines;
+mod listen;
 mod log;
 mod lot;
 mod probe;
@@ -93,6 +95,7 @@ enum Command {
     Export(export::Args),
     Import(import::Args),
     Audit(audit::Args),
+    Listen(listen::Args),
     Backup(backup::Args),
     Salvage(salvage::Args),
     Config(config::Args),
@@ -119,6 +122,7 @@ pub fn run() -> ExitCode {
         Command::Export(args) => export::run(&context, args),
         Command::Import(args) => import::run(&context, args),
         Command::Audit(args) => audit::run(&context, args),
+        Command::Listen(args) => listen::run(&context, args),
         Command::Backup(args) => backup::run(&context, args),
         Command::Salvage(args) => salvage::run(&context, args),
         Command::Config(args) => config::run(&context, args),

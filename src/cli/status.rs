@@ -27,18 +27,25 @@ A value older than three logging intervals (a minute at least) is called stale.
 Example:
   halfcell status
   halfcell status --storage
+  halfcell status --lines
   halfcell status --at '2026-03-02 09:14' --json")]
 pub(super) struct Args {
     /// What was known then
     #[arg(long, value_name = "T", allow_hyphen_values = true)]
     at: Option<String>,
     /// Instead: how the ledger lies on its disk, and how the writer and the last audit did
-    #[arg(long, conflicts_with = "at")]
+    #[arg(long, conflicts_with_all = ["at", "lines"])]
     storage: bool,
+    /// The serial lines instead: what was heard, thrown away and why, timeouts, latency
+    #[arg(long, conflicts_with = "at")]
+    lines: bool,
 }
 
 pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
     let site = context.site()?;
+    if args.lines {
+        return super::lines::run(context, &site);
+    }
     let moment = Moment::asked(context, &site, args.at.as_deref())?;
     let reader = context.reader(&site)?;
     if args.storage {

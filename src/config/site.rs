@@ -58,6 +58,15 @@ pub enum Device {
     UsbSerial(String),
 }
 
+impl std::fmt::Display for Device {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            Self::Path(path) => path.display().fmt(f),
+            Self::UsbSerial(serial) => write!(f, "USB serial number {serial}"),
+        }
+    }
+}
+
 /// Rate and frame of a line.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Framing {
@@ -148,6 +157,9 @@ pub enum Source {
         text: TextShape,
     },
 }
+
+/// The group of a pattern that holds the meter's own time: kept and compared with ours, no signal.
+pub const OWN_TIME: &str = "time";
 
 /// Shape of a meter's text lines.
 #[derive(Debug, Clone, PartialEq, Eq)]

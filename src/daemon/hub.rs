@@ -8,7 +8,9 @@ use crate::daemon::clock::Step;
 use crate::daemon::line::FromLine;
 use crate::electrode::units::Timestamp;
 use crate::ledger::event::{Body, NewEvent};
-use crate::ledger::{Batch, PointId};
+use crate::ledger::{Batch, LineState, PointId};
+use crate::meters::counters::Counters;
+use crate::meters::report::LineReport;
 use crate::meters::sample::{self, Sample};
 use crate::pipeline::interval::Interval;
 use crate::pipeline::{Arrival, Figure, Standing, read};
@@ -109,7 +111,7 @@ impl Hub {
                 let meter = self.meter_name(meter);
                 self.event(at, Body::MeterBack { meter, away_ms });
             }
-            FromLine::Counters { .. } => {}
+            FromLine::Counters { line, counters } => self.line_state(line, &counters, now),
         }
     }
 
@@ -143,8 +145,8 @@ impl Hub {
 
     /// Hands over what has come together, if anything has.
     pub fn take_batch(&mut self) -> Option<Batch> {
-        let empty = self.batch.rows.is_empty() && self.batch.events.is_empty();
-        (!empty).then(|| std::mem::take(&mut self.batch))
+        let nothing = self.batch == Batch::default();
+        (!nothing).then(|| std::mem::take(&mut self.batch))
     }
 
     fn take_sample(&mut self, sample: &Sample, at: Timestamp) {
@@ -192,6 +194,18 @@ impl Hub {
         }
         let reading = read(&self.site.points[n], &self.standing, arrival);
         self.batch.rows.push((self.ids[n], reading));
+    }
+
+    /// Only the newest state of a line is handed over.
+    fn line_state(&mut self, line: usize, counters: &Counters, at: Timestamp) {
+        let report = LineReport::new(&self.site, counters);
+        let line = self.line_name(line);
+        // Counts and texts: nothing in them that JSON cannot say.
+        let Ok(body) = serde_json::to_string(&report) else {
+            return;
+        };
+        self.batch.lines.retain(|older| older.line != line);
+        self.batch.lines.push(LineState { line, at, body });
     }
 
     fn line_name(&self, line: usize) -> String {

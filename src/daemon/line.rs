@@ -5,12 +5,14 @@
 //! tried again until it is back. 3. Other lines never notice.
 
 use super::backoff::Backoff;
+use super::chain;
 use super::clock;
 use super::hotplug::Hotplug;
 use crate::config::site::{Device, Line, Site};
 use crate::electrode::units::Timestamp;
 use crate::meters::counters::Counters;
 use crate::meters::machine::{Action, LineMachine};
+use crate::meters::own_time::OwnClock;
 use crate::meters::port::{Port, PortError};
 use crate::meters::sample::Sample;
 use std::path::Path;
@@ -73,12 +75,12 @@ pub enum FromLine {
         /// For how long it was silent.
         away_ms: u64,
     },
-    /// The counters of the line, every 10 s and at its end.
+    /// The counters of the line: every 10 s, when its port comes or goes, and at its end.
     Counters {
         /// Index into [`Site::lines`].
         line: usize,
         /// The counts.
-        counters: Counters,
+        counters: Box<Counters>,
     },
 }
 
@@ -116,6 +118,7 @@ pub async fn run_line(
     let mut task = Task {
         idx: line,
         line: of_line,
+        zone: site.timezone,
         machine,
         out,
         lost: None,
@@ -185,6 +188,7 @@ async fn stopped(stop: &mut watch::Receiver<bool>) {
 struct Task<'a> {
     idx: usize,
     line: &'a Line,
+    zone: chrono_tz::Tz,
     machine: LineMachine,
     out: mpsc::Sender<FromLine>,
     /// Since when the port is lost.
@@ -197,7 +201,9 @@ impl Task<'_> {
         self.machine.on_open(now);
         info!(line = %self.line.name, "line opened");
         if let Some(since) = self.lost.take() {
-            self.machine.counters_mut().reopenings += 1;
+            let counters = self.machine.counters_mut();
+            counters.reopenings += 1;
+            counters.lost = None;
             let back = FromLine::Back {
                 line: self.idx,
                 at: clock::now(),
@@ -205,6 +211,7 @@ impl Task<'_> {
             };
             tell(&self.out, back).await;
         }
+        self.tell_counters().await;
         // What is there already was said before anybody listened, however late it is read.
         loop {
             match port.read_now(bytes)? {
@@ -222,6 +229,7 @@ impl Task<'_> {
         if self.lost.is_none() {
             self.lost = Some(clock::instant());
             warn!(line = %self.line.name, %cause, "line lost");
+            self.machine.counters_mut().lost = Some(cause.clone());
             tell(
                 &self.out,
                 FromLine::Lost {
@@ -231,6 +239,7 @@ impl Task<'_> {
                 },
             )
             .await;
+            self.tell_counters().await;
         }
     }
 
@@ -312,11 +321,18 @@ impl Task<'_> {
                     port.write(&bytes).await?;
                     continue;
                 }
-                Action::Deliver(sample) => FromLine::Sample {
-                    sample,
-                    at,
-                    instant,
-                },
+                Action::Deliver(sample) => {
+                    if let Some(said) = &sample.own_time {
+                        self.machine.counters_mut().meter(sample.meter, |m| {
+                            m.clock = OwnClock::hearing(m.clock.take(), said, at, self.zone);
+                        });
+                    }
+                    FromLine::Sample {
+                        sample,
+                        at,
+                        instant,
+                    }
+                }
                 Action::Silent {
                     meter,
                     since,
@@ -342,7 +358,7 @@ impl Task<'_> {
     }
 
     async fn tell_counters(&mut self) {
-        let counters = self.machine.counters().clone();
+        let counters = Box::new(self.machine.counters().clone());
         tell(
             &self.out,
             FromLine::Counters {
@@ -365,15 +381,4 @@ fn ms(span: Duration) -> u64 {
 
 fn explained(error: &PortError) -> String {
     format!("{}; {}", chain(error), error.remedy())
-}
-
-/// The error and its causes, outermost first.
-fn chain(error: &dyn std::error::Error) -> String {
-    let mut text = error.to_string();
-    let mut inner = error.source();
-    while let Some(cause) = inner {
-        text = format!("{text}: {cause}");
-        inner = cause.source();
-    }
-    text
 }

@@ -28,11 +28,9 @@ const WRITER_MAY_HANG: Duration = Duration::from_mins(1);
 #[derive(Debug, thiserror::Error)]
 pub enum DaemonError {
     /// The ledger cannot be used.
-    #[error("ledger `{}` cannot be used", path.display())]
+    #[error("the daemon cannot use its ledger")]
     Ledger {
-        /// Its file.
-        path: PathBuf,
-        /// Why.
+        /// Why, with the file.
         source: Box<LedgerError>,
     },
     /// Another daemon writes this ledger.
@@ -96,7 +94,6 @@ pub async fn run(
 ) -> Result<(), DaemonError> {
     let path = site.ledger.clone();
     let ledger_error = |source| DaemonError::Ledger {
-        path: path.clone(),
         source: Box::new(source),
     };
     let mut ledger = Ledger::open(&path).map_err(ledger_error)?;

@@ -7,6 +7,7 @@ use super::book;
 use super::chart::{self, Bucket};
 use super::error::LedgerError;
 use super::event::Event;
+use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::rows::At;
 use super::schema;
@@ -136,6 +137,14 @@ impl Reader {
             let (seq, reading) = row::unpack(point.kind, row);
             each(seq, reading)
         })
+    }
+
+    /// The newest state of every line that a daemon has run, by name.
+    ///
+    /// # Errors
+    /// What the database says.
+    pub fn lines(&self) -> Result<Vec<LineState>, LedgerError> {
+        line_state::all(&self.connection).map_err(self.at("read the state of the lines"))
     }
 
     /// `point` from `from` up to before `to` in `n` buckets of equal length. Buckets of an hour or more are made of whole

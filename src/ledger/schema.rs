@@ -11,6 +11,7 @@ use std::time::Duration;
 const MIGRATIONS: &[&str] = &[
     include_str!("../../migrations/0001-readings-and-events.sql"),
     include_str!("../../migrations/0002-sealed-hours.sql"),
+    include_str!("../../migrations/0003-line-state.sql"),
 ];
 
 /// "half" in ASCII, as the first migration sets it.

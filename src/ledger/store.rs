@@ -7,6 +7,7 @@ use super::book;
 use super::codec::{Packed, TIME};
 use super::error::LedgerError;
 use super::event::{Body, Event, NewEvent};
+use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema::{self, IfMissing};
 use super::seal::{Cut, Pass};
@@ -54,6 +55,8 @@ pub struct Batch {
     pub rows: Vec<(PointId, Reading)>,
     /// Events. A [`Body::ClockStep`] gets the number of this batch's first row.
     pub events: Vec<NewEvent>,
+    /// The newest state of lines; each replaces the one before.
+    pub lines: Vec<LineState>,
 }
 
 /// Which row becomes a point's newest.
@@ -206,6 +209,7 @@ impl Ledger {
                 &batch.events,
                 Newest::LastArrived,
             )?;
+            line_state::replace(&transaction, &path, &batch.lines)?;
             all.last_seq = Some(one.last_seq);
             let steps = |event: &NewEvent| matches!(event.body, Body::ClockStep { .. });
             if batch.events.iter().any(steps) {

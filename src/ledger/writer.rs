@@ -196,12 +196,13 @@ impl Shared {
 }
 
 impl Queue {
-    /// Drops the rows, never the events, of what waits for longer than `limit`.
+    /// Drops the rows and the state of lines, never the events, of what waits for longer than `limit`.
     fn drop_older_than(&mut self, limit: Duration, now: Instant) {
         for old in &mut self.waiting {
             if now.saturating_duration_since(old.since) <= limit {
                 break;
             }
+            old.batch.lines.clear();
             for (_, reading) in std::mem::take(&mut old.batch.rows) {
                 self.n_dropped += 1;
                 let dropped = self.dropped.get_or_insert(Dropped {
@@ -285,6 +286,7 @@ impl Task {
         let now = (self.shared.clock.now)();
         let note = dropped.map(|dropped| Batch {
             rows: Vec::new(),
+            lines: Vec::new(),
             events: vec![NewEvent {
                 at: dropped.to,
                 entered: now,

@@ -2,6 +2,7 @@
 //!
 //! Always: on a text line, samples and rejections together are not fewer than the lines heard.
 
+use super::own_time::OwnClock;
 use std::collections::VecDeque;
 use std::time::Duration;
 
@@ -75,8 +76,10 @@ pub struct Example {
 }
 
 /// Counts of one line since its task began.
-#[derive(Debug, Clone, Default, PartialEq, Eq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub struct Counters {
+    /// Why the port is lost; `None` while it is open.
+    pub lost: Option<String>,
     /// Bytes heard.
     pub bytes: u64,
     /// Text lines ended, or Modbus answers taken.
@@ -91,7 +94,7 @@ pub struct Counters {
 }
 
 /// Counts of one meter since its line's task began.
-#[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub struct MeterCounters {
     /// Index into [`Site::meters`](crate::config::site::Site::meters).
     pub meter: usize,
@@ -105,6 +108,8 @@ pub struct MeterCounters {
     pub latency: Duration,
     /// The longest such time.
     pub latency_max: Duration,
+    /// Its own clock, where it prints one.
+    pub clock: Option<OwnClock>,
 }
 
 impl Counters {

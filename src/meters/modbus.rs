@@ -257,6 +257,7 @@ impl Unit {
         Sample {
             meter: self.meter,
             figures: std::mem::replace(&mut self.figures, empty),
+            own_time: None,
         }
     }
 

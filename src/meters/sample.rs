@@ -16,4 +16,6 @@ pub struct Sample {
     pub meter: usize,
     /// The figures.
     pub figures: Vec<Option<Figure>>,
+    /// The time the meter printed beside them, as it stood there.
+    pub own_time: Option<String>,
 }

@@ -7,7 +7,7 @@ use super::checksum;
 use super::counters::Reason;
 use super::figure::{characters, number};
 use super::sample::{Figure, Sample};
-use crate::config::site::{Checksum, Meter, Signal, TextShape};
+use crate::config::site::{Checksum, Meter, OWN_TIME, Signal, TextShape};
 use regex_lite::{Captures, Match, Regex, RegexBuilder};
 
 /// Numbers that stand in for an over-range word while the pattern is tried: one of them has the shape that it asks for.
@@ -105,6 +105,9 @@ impl TextDecoder {
         Ok(Sample {
             meter: self.meter,
             figures,
+            own_time: found
+                .name(OWN_TIME)
+                .map(|group| group.as_str().trim().to_owned()),
         })
     }
 

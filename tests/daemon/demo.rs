@@ -1,6 +1,6 @@
 //! The demo: nothing typed but its name.
 
-use crate::harness::{HALFCELL, PATIENCE, ok, until};
+use crate::harness::{HALFCELL, PATIENCE, ok, taken_up_after_ms, until};
 use std::process::{Command, Stdio};
 
 #[test]
@@ -8,7 +8,7 @@ fn the_demo_shows_values_of_six_points_and_leaves_a_sound_ledger() {
     let folder = tempfile::tempdir().unwrap();
     let place = folder.path().join("demo");
     let demo = Command::new(HALFCELL)
-        .args(["demo", "--days", "8", "--seconds", "6", "--folder"])
+        .args(["demo", "--days", "8", "--seconds", "12", "--folder"])
         .arg(&place)
         .stderr(Stdio::piped())
         .stdout(Stdio::piped())
@@ -44,10 +44,9 @@ fn the_demo_shows_values_of_six_points_and_leaves_a_sound_ledger() {
     ]));
     let changed =
         |status: &serde_json::Value| pond(status)["calibration"] != pond(&before)["calibration"];
-    let (_, took) = until("the new calibration in the status", PATIENCE, || {
+    until("the new calibration in the status", PATIENCE, || {
         status().filter(changed)
     });
-    assert!(took.as_secs_f64() <= 2.0, "it took {took:?}");
 
     let ended = demo.wait_with_output().unwrap();
     ok(&ended);
@@ -71,4 +70,6 @@ fn the_demo_shows_values_of_six_points_and_leaves_a_sound_ledger() {
         assert!(shown.contains(words), "`{words}` is not in:\n{shown}");
     }
     ok(&says(&["audit"]));
+    let taken_up = taken_up_after_ms(&place.join("sable-creek.db"), "POND-1").unwrap();
+    assert!(taken_up <= 2_000, "after {taken_up} ms");
 }

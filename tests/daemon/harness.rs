@@ -188,8 +188,24 @@ pub(crate) fn rows(ledger: &Path, tag: &str) -> Vec<(i64, Reading)> {
     found
 }
 
+/// All events; none while the daemon is still making the ledger.
 pub(crate) fn events(ledger: &Path) -> Vec<Event> {
-    Reader::open(ledger).unwrap().events(0).unwrap()
+    Reader::open(ledger)
+        .and_then(|reader| reader.events(0))
+        .unwrap_or_default()
+}
+
+/// How long after it was recorded the newest calibration made its first reading at `tag`, by the ledger's own times.
+pub(crate) fn taken_up_after_ms(ledger: &Path, tag: &str) -> Option<i64> {
+    let is_calibration =
+        |e: &&Event| matches!(e.body, halfcell::ledger::event::Body::Calibration(_));
+    let events = events(ledger);
+    let calibration = events.iter().rev().find(is_calibration)?;
+    let rows = rows(ledger, tag);
+    let first = rows
+        .iter()
+        .find(|(_, r)| r.calibration == Some(calibration.id))?;
+    Some(first.1.at.ms() - calibration.entered.ms())
 }
 
 /// Waits until `so` gives something, at most `limit`.

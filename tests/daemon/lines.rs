@@ -1,6 +1,6 @@
 //! Lines come and go, calibrations are taken up, and no other line notices.
 
-use crate::harness::{PATIENCE, Ponds, events, rows, until};
+use crate::harness::{PATIENCE, Ponds, events, rows, taken_up_after_ms, until};
 use halfcell::ledger::event::Body;
 use halfcell::watch::flags::Flag;
 use std::time::Duration;
@@ -16,11 +16,12 @@ fn a_calibration_typed_beside_the_running_daemon_is_in_force_within_two_seconds(
     // −23.4 mV at 18.2 °C by offset and slope of the first calibration: between pH 7 and 8.
     assert!((7.0..8.0).contains(&before.value.unwrap()), "{before:?}");
     ponds.calibrate(174.0);
-    let (after, took) = until("the new calibration", PATIENCE, || {
+    let (after, _) = until("the new calibration", PATIENCE, || {
         last().filter(|r| r.calibration != before.calibration)
     });
     assert!(after.calibration > before.calibration);
-    assert!(took <= Duration::from_secs(2), "it took {took:?}");
+    let taken_up = taken_up_after_ms(&ponds.ledger(), "POND-A").unwrap();
+    assert!(taken_up <= 2_000, "after {taken_up} ms");
     assert!(
         (after.value.unwrap() - before.value.unwrap()).abs() > 0.005,
         "{before:?} {after:?}"
@@ -86,5 +87,35 @@ fn a_line_that_is_not_there_is_an_event_and_a_row_says_that_nothing_comes() {
         events(&ponds.ledger())
             .iter()
             .any(|e| matches!(&e.body, Body::LineLost { line, .. } if line == "line-a"))
+    );
+}
+
+#[test]
+fn the_counts_of_a_line_are_shown_beside_the_running_daemon() {
+    let ponds = Ponds::new();
+    let _daemon = ponds.run();
+    let shown = || {
+        let said = ponds.says(&["status", "--lines", "--json"]);
+        let said: serde_json::Value = serde_json::from_slice(&said.stdout).ok()?;
+        let line = said["lines"][0].clone();
+        (line["samples"].as_u64()? >= 5).then_some(line)
+    };
+    // The counts are written when the port opens and every ten seconds from then on.
+    let (line, _) = until("five samples counted", PATIENCE, shown);
+    assert_eq!(
+        (&line["line"], &line["lost"]),
+        (&"line-a".into(), &serde_json::Value::Null)
+    );
+    assert_eq!(line["meters"][0]["meter"], "meter-a");
+    assert_eq!(line["samples"], line["meters"][0]["samples"]);
+    let rejected: u64 = line["rejected"]
+        .as_object()
+        .unwrap()
+        .values()
+        .map(|n| n.as_u64().unwrap())
+        .sum();
+    assert_eq!(
+        line["lines"].as_u64().unwrap(),
+        line["samples"].as_u64().unwrap() + rejected
     );
 }

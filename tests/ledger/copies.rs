@@ -21,7 +21,7 @@ fn a_backup_made_while_the_writer_writes_is_whole_and_restores() {
         writer
             .push(Batch {
                 rows,
-                events: Vec::new(),
+                ..Batch::default()
             })
             .unwrap();
     }

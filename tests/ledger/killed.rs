@@ -35,6 +35,7 @@ fn child_that_writes_until_it_is_killed() {
             .push(Batch {
                 rows,
                 events: vec![],
+                ..Batch::default()
             })
             .unwrap();
         if n % 4 == 3 || n + 1 == n_commits {

@@ -19,7 +19,7 @@ const SMALL_DISK: &str = "HALFCELL_TEST_SMALL_DISK";
 fn batch(point: halfcell::ledger::PointId, from: i64, n: i64) -> Batch {
     Batch {
         rows: (from..from + n).map(|t| (point, reading(t, 1.0))).collect(),
-        events: Vec::new(),
+        ..Batch::default()
     }
 }
 
@@ -244,7 +244,7 @@ fn the_writer_seals_at_start_up_after_the_hour_and_on_a_step_of_the_clock() {
             let ticket = writer
                 .push(Batch {
                     events: vec![event(t, probe("P-1"))],
-                    rows: Vec::new(),
+                    ..Batch::default()
                 })
                 .unwrap();
             wait_until(&mut writer.status(), |s| s.committed == ticket);

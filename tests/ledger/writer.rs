@@ -39,6 +39,7 @@ fn what_is_acknowledged_can_be_read() {
             .push(Batch {
                 rows: vec![(f.point, reading(n, 1.0))],
                 events: vec![],
+                ..Batch::default()
             })
             .unwrap();
         let status = wait_until(&mut writer.status(), |s| s.committed >= ticket);
@@ -59,6 +60,7 @@ fn stopping_commits_what_waits() {
             .push(Batch {
                 rows: vec![(f.point, reading(n, 1.0))],
                 events: vec![event(n, probe("P-1"))],
+                ..Batch::default()
             })
             .unwrap();
     }
@@ -79,6 +81,7 @@ fn while_a_neighbour_holds_the_lock_readings_wait_and_then_all_land() {
             .push(Batch {
                 rows: vec![(f.point, reading(n, 1.0))],
                 events: vec![],
+                ..Batch::default()
             })
             .unwrap();
     }

@@ -14,7 +14,7 @@ const PATTERN: &str = r"^\s*(?<mv>[-+]?\d+[.,]\d+)\s*mV\s+(?<temp_c>[-+]?\d+[.,]
 
 fn counters(told: &[FromLine]) -> halfcell::meters::counters::Counters {
     let last = told.iter().rev().find_map(|m| match m {
-        FromLine::Counters { counters, .. } => Some(counters.clone()),
+        FromLine::Counters { counters, .. } => Some((**counters).clone()),
         _ => None,
     });
     last.unwrap()

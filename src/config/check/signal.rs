@@ -5,7 +5,7 @@ use crate::config::keys;
 use crate::config::near::instead_of;
 use crate::config::problem::Problems;
 use crate::config::raw::{Table, Value};
-use crate::config::site::{Layout, Register, Signal, WordOrder};
+use crate::config::site::{Layout, OWN_TIME, Register, Signal, WordOrder};
 use regex_lite::Regex;
 
 const GROUPS: &str = "name each figure's group: '(?<mv>[-+]?\\d+[.,]\\d+)\\s*mV'";
@@ -66,12 +66,16 @@ pub(super) fn text_signals(meter: &Table<'_>, problems: &mut Problems<'_>) -> Op
     Some(pattern?.into_iter().map(signal).collect())
 }
 
-/// The named groups of a pattern.
+/// The named groups of a pattern, but for the one of the meter's own time.
 fn groups(value: &Value<'_>, problems: &mut Problems<'_>) -> Option<Vec<String>> {
     let pattern = value.text(problems)?;
     match Regex::new(pattern) {
         Ok(regex) => {
-            let names: Vec<String> = regex.capture_names().flatten().map(str::to_owned).collect();
+            let signals = regex.capture_names().flatten();
+            let names: Vec<String> = signals
+                .filter(|name| *name != OWN_TIME)
+                .map(str::to_owned)
+                .collect();
             if names.is_empty() {
                 value.refuse(problems, "the pattern names no signal", GROUPS);
                 return None;
