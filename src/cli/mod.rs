@@ -30,6 +30,7 @@ mod run;
 mod salvage;
 mod standards;
 mod status;
+mod storage;
 mod typed;
 mod verify;
 

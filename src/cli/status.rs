@@ -6,6 +6,7 @@ use super::derived;
 use super::exit::Exit;
 use super::failure::Failure;
 use super::figures::{self, NOTHING};
+use super::storage;
 use crate::config::site::{Point, Site};
 use crate::config::time;
 use crate::electrode::convert::Converted;
@@ -25,12 +26,16 @@ A value older than three logging intervals (a minute at least) is called stale.
 
 Example:
   halfcell status
+  halfcell status --storage
   halfcell status --lines
   halfcell status --at '2026-03-02 09:14' --json")]
 pub(super) struct Args {
     /// What was known then
     #[arg(long, value_name = "T", allow_hyphen_values = true)]
     at: Option<String>,
+    /// Instead: how the ledger lies on its disk, and how the writer and the last audit did
+    #[arg(long, conflicts_with_all = ["at", "lines"])]
+    storage: bool,
     /// The serial lines instead: what was heard, thrown away and why, timeouts, latency
     #[arg(long, conflicts_with = "at")]
     lines: bool,
@@ -43,6 +48,9 @@ pub(super) fn run(context: &Context, args: &Args) -> Result<Exit, Failure> {
     }
     let moment = Moment::asked(context, &site, args.at.as_deref())?;
     let reader = context.reader(&site)?;
+    if args.storage {
+        return storage::show(context, &reader);
+    }
     let failed = |error: LedgerError| super::context::ledger_failed(&error);
     if context.json {
         let book = reader.book(None).map_err(failed)?;

@@ -22,6 +22,7 @@ mod rows;
 mod salvage;
 mod schema;
 mod seal;
+mod storage;
 mod store;
 mod writer;
 
@@ -34,5 +35,6 @@ pub use line_state::LineState;
 pub use reader::Reader;
 pub use row::PointId;
 pub use salvage::{Salvaged, salvage};
+pub use storage::{AuditNote, LONG_LOG, Storage, WriterNote};
 pub use store::{Appended, Batch, Ledger};
 pub use writer::{Clock, LONGEST_WAIT, Trouble, Writer, WriterStatus};

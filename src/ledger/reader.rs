@@ -11,6 +11,7 @@ use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::rows::At;
 use super::schema;
+use super::storage::{self, Storage};
 use crate::electrode::history::{Book, EventId, Tag};
 use crate::electrode::units::Timestamp;
 use crate::watch::reading::Reading;
@@ -175,6 +176,14 @@ impl Reader {
     /// As [`Reader::audit`].
     pub fn audit_from(&self, anchor: Option<&str>) -> Result<AuditReport, LedgerError> {
         audit::audit(&self.connection, &self.path, anchor).map_err(self.at("audit"))
+    }
+
+    /// How the ledger lies on its disk.
+    ///
+    /// # Errors
+    /// What the database or the system says.
+    pub fn storage(&self) -> Result<Storage, LedgerError> {
+        storage::storage(&self.connection, &self.path)
     }
 
     fn at_point(&self, point: PointId) -> At<'_> {

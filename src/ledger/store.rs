@@ -2,6 +2,7 @@
 //!
 //! Every write is one `BEGIN IMMEDIATE` transaction: one that reads first and then writes fails beside another writer at once.
 
+use super::backup::with_end;
 use super::book;
 use super::codec::{Packed, TIME};
 use super::error::LedgerError;
@@ -10,6 +11,7 @@ use super::line_state::{self, LineState};
 use super::row::{self, PointId};
 use super::schema::{self, IfMissing};
 use super::seal::{Cut, Pass};
+use super::storage::{AuditNote, LONG_LOG};
 use crate::electrode::history::{Book, ProbeKind, Tag};
 use crate::electrode::units::Timestamp;
 use crate::watch::reading::Reading;
@@ -269,6 +271,39 @@ impl Ledger {
             .and_then(|n| transaction.commit().map(|()| n))
             .map_err(|source| LedgerError::of(&path, "prune sealed readings", source))?;
         Ok(u32::try_from(n) == Ok(PRUNED_AT_ONCE))
+    }
+
+    /// Notes a sound audit, for `status`.
+    ///
+    /// # Errors
+    /// What the database says.
+    pub fn note_audit(&mut self, at: Timestamp, note: &AuditNote) -> Result<(), LedgerError> {
+        self.note("audit", at, note)
+    }
+
+    /// Writes a note; cuts a log that has grown long.
+    pub(super) fn note(
+        &mut self,
+        name: &str,
+        at: Timestamp,
+        note: &impl serde::Serialize,
+    ) -> Result<(), LedgerError> {
+        let body = serde_json::to_string(note).unwrap_or_default();
+        let path = self.path.clone();
+        let failed = |source| LedgerError::of(&path, "write a note", source);
+        let transaction = self.begin()?;
+        transaction
+            .prepare_cached("INSERT OR REPLACE INTO note(name, at_ms, body) VALUES (?, ?, ?)")
+            .and_then(|mut statement| statement.execute(params![name, at.ms(), body]))
+            .map_err(failed)?;
+        transaction.commit().map_err(failed)?;
+        let log = std::fs::metadata(with_end(&path, "-wal"));
+        if log.is_ok_and(|log| log.len() > LONG_LOG) {
+            self.connection
+                .query_row("PRAGMA wal_checkpoint(TRUNCATE)", [], |_| Ok(()))
+                .map_err(failed)?;
+        }
+        Ok(())
     }
 
     /// How long to wait for another process's lock.

@@ -248,6 +248,12 @@ impl Task {
                 return;
             }
             if let Some(ledger) = &mut self.ledger {
+                let standing = {
+                    let status = self.publish.borrow();
+                    (status.n_waiting, status.n_dropped)
+                };
+                self.chores
+                    .note(ledger, (self.shared.clock.now)(), standing);
                 self.chores.do_some(ledger, (self.shared.clock.now)());
             }
         }
@@ -293,6 +299,7 @@ impl Task {
             }],
         });
         let batches = note.iter().chain(work.iter().map(|waiting| &waiting.batch));
+        let began = (self.shared.clock.instant)();
         let tried = match &mut self.ledger {
             Some(ledger) => ledger.append_batches(batches),
             // A file that is gone is not made anew: an unmounted disk would get a second ledger.
@@ -305,6 +312,9 @@ impl Task {
         };
         match tried {
             Ok(appended) => {
+                let ended = (self.shared.clock.instant)();
+                self.chores
+                    .committed(ended.saturating_duration_since(began));
                 if let Some(seq) = appended.stepped_at {
                     self.chores.clock_stepped(seq, now);
                 }
